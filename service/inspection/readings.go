@@ -1,0 +1,212 @@
+package inspection
+
+import (
+	"fmt"
+	"math"
+
+	"example.com/admit/service/crystal"
+	"example.com/admit/service/network"
+	"example.com/admit/service/parttype"
+	"example.com/admit/service/resonance"
+	"example.com/admit/service/verdict"
+)
+
+// contactInfluence is the name of the repeat contact in the budget: a resistance in series with the unit, new at every insertion.
+const contactInfluence = "contact"
+
+// addContact adds the repeat contact to an estimate: it moves R1 and nothing else that can be told from it.
+func addContact(est *resonance.Estimate, contactOhm float64) {
+	if est.ScaleUnknown || contactOhm <= 0 || est.State != resonance.Found {
+		return
+	}
+	k := resonance.Contribution{Name: contactInfluence}
+	shift := contactOhm / math.Exp(est.Value[resonance.LogResistance])
+	k.Shift[resonance.LogResistance] = shift
+	k.Covariance[resonance.LogResistance][resonance.LogResistance] = shift * shift
+	est.Systematic = append(est.Systematic, k)
+}
+
+// causeOf turns what the fit found into the retest cause of the same name; a Found estimate has none.
+func causeOf(est *resonance.Estimate) (verdict.RetestCause, bool) {
+	if est.State == resonance.Found {
+		return verdict.RetestCause{}, false
+	}
+	return verdict.NewCause(verdict.Cause(est.State), est.Detail), true
+}
+
+// evidence puts a reading beside every limit of the limits section.
+func evidence(p *parttype.PartType, est *resonance.Estimate, g *gate) verdict.Evidence {
+	ev := verdict.Evidence{Limits: p.Limits, Causes: g.causes}
+	var all, frequencies []verdict.Cause // what suspends every limit, and what suspends those on frequency besides
+	for _, c := range g.causes {
+		f, others := suspends(c.Cause)
+		if others {
+			all = append(all, c.Cause)
+		} else if f {
+			frequencies = append(frequencies, c.Cause)
+		}
+	}
+	if c, bad := causeOf(est); bad {
+		if !named(ev.Causes, c.Cause) {
+			ev.Causes = append(ev.Causes, c)
+		}
+		all = append(all, c.Cause)
+	}
+	for _, limit := range p.Limits {
+		r := verdict.Reading{Quantity: limit.Quantity, Where: verdict.Nowhere, Unit: unitOf(limit.Quantity), SuspendedBy: all}
+		if limit.Quantity == parttype.FrequencyDeviation {
+			r.SuspendedBy = append(append([]verdict.Cause(nil), all...), frequencies...)
+		}
+		if !g.scale && needsOhms(limit) {
+			c := verdict.NewCause(verdict.CalibrationMissing, "The fixture network is not known: resistances, inductance and capacitances cannot be told.")
+			if !named(ev.Causes, c.Cause) {
+				ev.Causes = append(ev.Causes, c)
+			}
+			r.SuspendedBy = append(append([]verdict.Cause(nil), r.SuspendedBy...), c.Cause)
+		} else if known(est) {
+			r.Measured, r.Note, r.HasValue = read(limit, p, est)
+			if !r.HasValue && len(r.SuspendedBy) == 0 {
+				// A unit that has no such quantity at all: not a part out of limit, a limit that does not fit the unit.
+				r.SuspendedBy = []verdict.Cause{verdict.ModelMisfit}
+				ev.Causes = append(ev.Causes, verdict.NewCause(verdict.ModelMisfit, fmt.Sprintf("%s cannot be told: %s.", verdict.Label(limit.Quantity, verdict.Nowhere), r.Note)))
+			}
+		}
+		ev.Readings = append(ev.Readings, r)
+	}
+	return ev
+}
+
+// known reports whether an estimate holds a unit, trusted or not.
+func known(est *resonance.Estimate) bool {
+	return est.Value[resonance.ResonanceHz] > 0 && (est.State == resonance.Found || est.State == resonance.OutsideSweep || est.State == resonance.Misfit)
+}
+
+func named(causes []verdict.RetestCause, c verdict.Cause) bool {
+	for _, k := range causes {
+		if k.Cause == c {
+			return true
+		}
+	}
+	return false
+}
+
+// needsOhms reports whether a limit needs the scale of impedances; frequencies of the motional arm and Q do not.
+func needsOhms(l parttype.Limit) bool {
+	switch l.Quantity {
+	case parttype.QualityFactor:
+		return false
+	case parttype.FrequencyDeviation:
+		return l.Of != parttype.MotionalResonance
+	}
+	return true
+}
+
+// unitOf returns the unit of a quantity's limit.
+func unitOf(q parttype.Quantity) string {
+	switch q {
+	case parttype.FrequencyDeviation, parttype.PullingRange:
+		return verdict.UnitPPM
+	case parttype.MotionalResistance, parttype.ResonanceResistance, parttype.LoadResonanceResistance:
+		return verdict.UnitOhm
+	case parttype.MotionalCapacitance, parttype.ShuntCapacitance:
+		return verdict.UnitFarad
+	case parttype.PullingSensitivity:
+		return verdict.UnitPPMPerPF
+	}
+	return verdict.UnitNone
+}
+
+// read returns the reading for one limit, or a note why the unit has none.
+func read(l parttype.Limit, p *parttype.PartType, est *resonance.Estimate) (v verdict.Value, note string, ok bool) {
+	f := quantityOf(l, p)
+	if f == nil {
+		return v, "this quantity is not one of the main sweep", false
+	}
+	if v, ok = measure(est, f); ok {
+		return v, "", true
+	}
+	unit := est.Unit()
+	return v, fmt.Sprintf("the unit has no such frequency (figure of merit M = %.2f; zero phase needs more than 2)", unit.FigureOfMerit()), false
+}
+
+// quantityOf returns a limit's quantity as an exact function of the unit, in the unit of its limit; false where the unit has none.
+func quantityOf(l parttype.Limit, p *parttype.PartType) func(crystal.Unit) (float64, bool) {
+	load, how := p.Condition.LoadCapacitanceFarad, p.Condition.Connection
+	switch l.Quantity {
+	case parttype.FrequencyDeviation:
+		deviation := func(hz float64) float64 { return (hz - p.NominalFrequencyHz) / p.NominalFrequencyHz * 1e6 }
+		switch l.Of {
+		case parttype.LoadResonance:
+			return func(u crystal.Unit) (float64, bool) {
+				hz, _, err := u.LoadResonance(load, how)
+				return deviation(hz), err == nil
+			}
+		case parttype.Resonance:
+			return func(u crystal.Unit) (float64, bool) {
+				hz, _, err := u.Resonance()
+				return deviation(hz), err == nil
+			}
+		}
+		return func(u crystal.Unit) (float64, bool) { return deviation(u.Modes[0].ResonanceHz), true }
+	case parttype.MotionalResistance:
+		return func(u crystal.Unit) (float64, bool) { return u.Modes[0].ResistanceOhm, true }
+	case parttype.ResonanceResistance:
+		return func(u crystal.Unit) (float64, bool) {
+			_, ohm, err := u.Resonance()
+			return ohm, err == nil
+		}
+	case parttype.LoadResonanceResistance:
+		return func(u crystal.Unit) (float64, bool) {
+			_, ohm, err := u.LoadResonance(load, how)
+			return ohm, err == nil
+		}
+	case parttype.MotionalCapacitance:
+		return func(u crystal.Unit) (float64, bool) { return u.Modes[0].CapacitanceFarad(), true }
+	case parttype.ShuntCapacitance:
+		return func(u crystal.Unit) (float64, bool) { return u.ShuntCapacitanceFarad, true }
+	case parttype.QualityFactor:
+		return func(u crystal.Unit) (float64, bool) { return u.Modes[0].QualityFactor(), true }
+	case parttype.PullingSensitivity:
+		return func(u crystal.Unit) (float64, bool) {
+			s, err := u.PullingSensitivity(load, how)
+			return s * 1e-6, err == nil // per farad -> ppm per picofarad
+		}
+	case parttype.PullingRange:
+		return func(u crystal.Unit) (float64, bool) {
+			r, err := u.PullingRange(l.FromFarad, l.ToFarad, connectionOf(p))
+			return r * 1e6, err == nil
+		}
+	case parttype.StartMargin:
+		return func(u crystal.Unit) (float64, bool) {
+			ohm, err := startResistance(u, p)
+			return -l.NegativeResistanceOhm / ohm, err == nil
+		}
+	}
+	return nil
+}
+
+// connectionOf returns how a load is connected; a part type of series resonance that limits its pulling means a load in series.
+func connectionOf(p *parttype.PartType) crystal.LoadConnection {
+	if p.Condition.SeriesResonance {
+		return crystal.SeriesLoad
+	}
+	return p.Condition.Connection
+}
+
+// startResistance is what the customer's oscillator has to overcome: RL at the load, or Rr of a unit for series resonance.
+func startResistance(u crystal.Unit, p *parttype.PartType) (ohm float64, err error) {
+	if p.Condition.SeriesResonance {
+		_, ohm, err = u.Resonance()
+	} else {
+		_, ohm, err = u.LoadResonance(p.Condition.LoadCapacitanceFarad, p.Condition.Connection)
+	}
+	return ohm, err
+}
+
+// contactOf returns the repeat contact of a case.
+func contactOf(c *Case) float64 {
+	if c.Calibration == nil {
+		return network.DefaultContactUncertaintyOhm
+	}
+	return c.Calibration.ContactUncertaintyOhm
+}
