@@ -3,6 +3,9 @@ package inspection
 import (
 	"fmt"
 	"math"
+	"strings"
+	"unicode"
+	"unicode/utf8"
 
 	"example.com/admit/service/crystal"
 	"example.com/admit/service/network"
@@ -31,7 +34,16 @@ func causeOf(est *resonance.Estimate) (verdict.RetestCause, bool) {
 	if est.State == resonance.Found {
 		return verdict.RetestCause{}, false
 	}
-	return verdict.NewCause(verdict.Cause(est.State), est.Detail), true
+	return verdict.NewCause(verdict.Cause(est.State), sentence(est.Detail)), true
+}
+
+// sentence gives a detail a capital at its front and a full stop at its end.
+func sentence(detail string) string {
+	if detail == "" {
+		return ""
+	}
+	first, size := utf8.DecodeRuneInString(detail)
+	return string(unicode.ToUpper(first)) + strings.TrimRight(detail[size:], ".") + "."
 }
 
 // evidence puts a reading beside every limit of the limits section.

@@ -3,6 +3,7 @@ package verdict
 import (
 	"fmt"
 	"math"
+	"strings"
 
 	"example.com/admit/service/parttype"
 	"example.com/admit/service/uncertainty"
@@ -34,9 +35,15 @@ type Evidence struct {
 func Weigh(decision parttype.Decision, ev Evidence) Judgement {
 	j := Judgement{RetestCauses: append([]RetestCause(nil), ev.Causes...)}
 	var broken, open bool
-	var undecided []string
+	var undecided, vague []string
 	for i, limit := range ev.Limits {
-		f := hold(limit, ev.Readings[i], decision)
+		r := ev.Readings[i]
+		if len(r.SuspendedBy) == 0 && r.HasValue && !sharp(r.Measured, limit, decision) {
+			r.SuspendedBy = []Cause{TooNoisy}
+			r.Note = "its uncertainty leaves too little of the tolerance to decide anything"
+			vague = append(vague, Label(limit.Quantity, r.Where))
+		}
+		f := hold(limit, r, decision)
 		switch f.Outcome {
 		case Violates:
 			broken = true
@@ -47,6 +54,9 @@ func Weigh(decision parttype.Decision, ev Evidence) Judgement {
 			open = true
 		}
 		j.Findings = append(j.Findings, f)
+	}
+	if len(vague) > 0 && !named(j.RetestCauses, TooNoisy) {
+		j.RetestCauses = append(j.RetestCauses, NewCause(TooNoisy, "Too uncertain to be held against its limit: "+strings.Join(vague, ", ")+"."))
 	}
 	if len(undecided) > 0 {
 		j.RetestCauses = append(j.RetestCauses, NewCause(UndecidedAtLimit, undecided[0]))
@@ -74,6 +84,15 @@ func hold(limit parttype.Limit, r Reading, decision parttype.Decision) Finding {
 		f.Text = suspendedText(f, r)
 		return f
 	}
+	rule, confidence := ruleOf(limit, decision)
+	f.ConformanceProbability = Conformance(r.Measured, limit.Bounds)
+	f.Outcome = Decide(rule, confidence, r.Measured.Value, limit.Bounds, f.ConformanceProbability)
+	f.Text = findingText(f, rule, confidence)
+	return f
+}
+
+// ruleOf returns the rule and the confidence that hold for a limit: its own, else the part type's.
+func ruleOf(limit parttype.Limit, decision parttype.Decision) (parttype.Rule, float64) {
 	rule, confidence := decision.Rule, decision.Confidence
 	if limit.Decide.Rule != "" {
 		rule = limit.Decide.Rule
@@ -81,10 +100,36 @@ func hold(limit parttype.Limit, r Reading, decision parttype.Decision) Finding {
 	if limit.Decide.Confidence != 0 {
 		confidence = limit.Decide.Confidence
 	}
-	f.ConformanceProbability = Conformance(r.Measured, limit.Bounds)
-	f.Outcome = Decide(rule, confidence, r.Measured.Value, limit.Bounds, f.ConformanceProbability)
-	f.Text = findingText(f, rule, confidence)
-	return f
+	return rule, confidence
+}
+
+// sharp reports whether a reading is certain enough to be held against a limit at all: its uncertainty at the limit's confidence is at
+// most half of the tolerance, which for a limit on one side is the span from 0 to it. Anything vaguer could not be accepted wherever it
+// lay, and would be rejected for the measurement's sake, not the unit's.
+func sharp(v Value, limit parttype.Limit, decision parttype.Decision) bool {
+	_, confidence := ruleOf(limit, decision)
+	var width float64
+	switch b := limit.Bounds; {
+	case b.Min != nil && b.Max != nil:
+		width = *b.Max - *b.Min
+	case b.Max != nil:
+		width = math.Abs(*b.Max)
+	case b.Min != nil:
+		width = math.Abs(*b.Min)
+	}
+	if width == 0 || confidence <= 0.5 {
+		return true // a limit at 0, or a rule without confidence: there is nothing to measure the uncertainty by
+	}
+	return uncertainty.NormalQuantile(confidence)*v.StandardUncertainty <= width/2
+}
+
+func named(causes []RetestCause, c Cause) bool {
+	for _, k := range causes {
+		if k.Cause == c {
+			return true
+		}
+	}
+	return false
 }
 
 // Conformance returns the probability that the true value lies within the bounds, for a normal distribution about the measured value
@@ -106,34 +151,29 @@ func Conformance(v Value, b parttype.Bounds) float64 {
 	return uncertainty.Conformance(v.Value, v.StandardUncertainty, lower, upper)
 }
 
-// Decide applies a decision rule of JCGM 106:2012 clause 8. Simple: the measured value against the limits. Guarded acceptance: accepted
-// only with at least the stated probability of conformance, otherwise rejected. Guarded rejection: rejected only with at least that
-// probability of non-conformance. Guarded both: neither is certain enough in between, and that is undecided.
+// Decide applies a decision rule (JCGM 106:2012 clause 8, with the guard band of guarded acceptance made a third answer, because a
+// unit can be measured again). Simple: the measured value against the limits. Guarded acceptance: conforms with at least the stated
+// probability of conformance, violates outside the limits, undecided between. Guarded rejection: violates with at least that probability
+// of non-conformance, conforms otherwise. Guarded both: each needs its certainty, and between them it is undecided.
 func Decide(rule parttype.Rule, confidence, value float64, b parttype.Bounds, conformance float64) Outcome {
+	inside := (b.Min == nil || value >= *b.Min) && (b.Max == nil || value <= *b.Max)
+	accepted, rejected := conformance >= confidence, 1-conformance >= confidence
 	switch rule {
 	case parttype.GuardedAcceptance:
-		if conformance >= confidence {
-			return Conforms
-		}
-		return Violates
+		rejected = !inside
 	case parttype.GuardedRejection:
-		if 1-conformance >= confidence {
-			return Violates
-		}
-		return Conforms
+		accepted = !rejected
 	case parttype.GuardedBoth:
-		switch {
-		case conformance >= confidence:
-			return Conforms
-		case 1-conformance >= confidence:
-			return Violates
-		}
-		return Undecided
+	default:
+		accepted, rejected = inside, !inside
 	}
-	if (b.Min != nil && value < *b.Min) || (b.Max != nil && value > *b.Max) {
+	switch {
+	case rejected:
 		return Violates
+	case accepted:
+		return Conforms
 	}
-	return Conforms
+	return Undecided
 }
 
 func finite(v float64) bool { return !math.IsNaN(v) && !math.IsInf(v, 0) }
@@ -148,9 +188,7 @@ func findingText(f Finding, rule parttype.Rule, confidence float64) string {
 	case f.Outcome == Conforms:
 		return text + fmt.Sprintf(": outside, but not with the %s %% certainty that %s asks for", percent(confidence), rule)
 	case f.Outcome == Undecided:
-		return text + fmt.Sprintf(": too close to decide, conformance probability %s %%", percent(f.ConformanceProbability))
-	case inside:
-		return text + fmt.Sprintf(": inside, but not with the %s %% certainty that %s asks for", percent(confidence), rule)
+		return text + fmt.Sprintf(": too close to decide, conformance probability %s %%, %s asks for %s %%", percent(f.ConformanceProbability), rule, percent(confidence))
 	}
 	return text + ": out of limit"
 }

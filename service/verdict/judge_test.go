@@ -41,8 +41,8 @@ func TestDecisionRules(t *testing.T) {
 		simple, acceptance, rejection, both Outcome
 	}{
 		{38.3, Conforms, Conforms, Conforms, Conforms},
-		{38.4, Conforms, Violates, Conforms, Undecided},
-		{39.9, Conforms, Violates, Conforms, Undecided},
+		{38.4, Conforms, Undecided, Conforms, Undecided},
+		{39.9, Conforms, Undecided, Conforms, Undecided},
 		{40.1, Violates, Violates, Conforms, Undecided},
 		{41.6, Violates, Violates, Conforms, Undecided},
 		{41.7, Violates, Violates, Violates, Violates},
@@ -73,6 +73,8 @@ func TestPrecedence(t *testing.T) {
 	q := Reading{Quantity: parttype.QualityFactor, Where: Nowhere, Unit: UnitNone, Measured: Value{60000, 100}, HasValue: true}
 	suspendedBad := bad
 	suspendedBad.SuspendedBy = []Cause{TooNoisy}
+	vague := bad
+	vague.Measured.StandardUncertainty = 20
 	noNumber := good
 	noNumber.Measured = Value{math.NaN(), 1}
 	cause := []RetestCause{NewCause(TooNoisy, "signal 3 dB above the noise")}
@@ -88,6 +90,7 @@ func TestPrecedence(t *testing.T) {
 		{"broken but suspended", []Reading{suspendedBad, q}, cause, Retest},
 		{"cause without a suspended limit", []Reading{good, q}, cause, Retest},
 		{"no number", []Reading{noNumber, q}, nil, Retest},
+		{"broken, but by a reading too vague to mean it", []Reading{vague, q}, nil, Retest},
 	} {
 		j := Weigh(parttype.Decision{Rule: parttype.GuardedBoth, Confidence: 0.95}, Evidence{Limits: limits, Readings: c.readings, Causes: c.causes})
 		if j.Verdict != c.want {
