@@ -89,7 +89,6 @@ type stationView struct {
 	When                   string
 	Attempt                int
 	Why, Next              []string
-	Connected              bool
 }
 
 // stations builds the view, lines and stations in the order of the source.
@@ -118,7 +117,7 @@ var looks = map[verdict.Verdict]struct{ look, word, mark string }{
 }
 
 func station(s rpc.StationState, now time.Time) stationView {
-	v := stationView{Name: string(s.Name), Look: "none", Word: "no unit yet", Mark: "·", Connected: s.Connected}
+	v := stationView{Name: string(s.Name), Look: "none", Word: "no unit yet", Mark: "·"}
 	r := s.Last
 	if r == nil {
 		return v

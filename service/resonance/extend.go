@@ -1,0 +1,158 @@
+package resonance
+
+import "math"
+
+// A shunt conductance, a free phase of all samples and a factor on the timing are parameters only where the sweep itself asks for them. The rule, for each:
+//
+//  1. it is identifiable: what the other parameters cannot imitate of its derivative is more than leastPart of it. In a narrow
+//     window of a reflection a turn of the reference plane looks exactly like another C0, R1 and L1, and no significance can make up
+//     for that: the smallest error of the model would be blown up by the inverse of that part;
+//  2. it is significant: the likelihood gains more than leastGain (five standard deviations), so that in a million sweeps without
+//     it none loses precision to it;
+//  3. it explains: of what is systematic in the residual it takes away at least a third. A neighbouring mode is not mopped up by a phase.
+//
+// A phase left out is still reported with its standard deviation (Quality.FreePhaseRad), so that drift of the reference plane can be named.
+const (
+	leastPart      = 0.03
+	leastGain      = 25.0
+	leastExplained = 1.0 / 3
+)
+
+// extra is a parameter that is not in the model, as the solution sees it to first order.
+type extra struct {
+	value, deviation float64 // where it would go, and its standard deviation at the present noise
+	part             float64 // length of its derivative that the other parameters cannot imitate, over the whole length
+	gain             float64 // of twice the log-likelihood
+}
+
+// optional lists the parameters that extend may add, in the order in which they are looked at.
+var optional = [...]Parameter{ShuntConductanceSiemens, PhaseRad, logStretch}
+
+// has says whether an optional parameter is in the model.
+func (m *forward) has(p Parameter) bool { return m.column(p) >= 0 }
+
+// with returns the model with an optional parameter added.
+func (m forward) with(p Parameter) forward {
+	switch p {
+	case ShuntConductanceSiemens:
+		m.conductance = true
+	case PhaseRad:
+		m.phase = true
+	case logStretch:
+		m.stretched = true
+	}
+	return m
+}
+
+// carry puts parameters of this model into the vector of another; what this one does not have is 0.
+func (m *forward) carry(to *forward, from, into []float64) {
+	for p := ResonanceHz; p <= logStretch; p++ {
+		if k := to.column(p); k >= 0 {
+			into[k] = m.value(from, p)
+		}
+	}
+}
+
+// extend adds G0, a free phase and, for a resonator that rings, a factor on the timing to the fit where the rule asks for them.
+func (f *Fitter) extend(est *Estimate) {
+	for range optional {
+		extras := f.extras()
+		est.Quality.FreePhaseRad, est.Quality.FreePhaseSigma = 0, 0
+		if phase := extras[1]; phase.part > leastPart {
+			est.Quality.FreePhaseRad, est.Quality.FreePhaseSigma = phase.value, phase.deviation
+		}
+		best := -1
+		for i, e := range extras {
+			if e.part > leastPart && e.gain > leastGain && (best < 0 || e.gain > extras[best].gain) {
+				best = i
+			}
+		}
+		if best < 0 || !f.refit(optional[best]) {
+			return
+		}
+	}
+}
+
+// refit fits the model with one parameter more from the present solution. If that gains nothing or explains nothing, the solution before
+// stands.
+func (f *Fitter) refit(p Parameter) bool {
+	model, old, seen := f.forward, f.best, f.seen
+	next := &f.tried.solution[0]
+	*next = solution{robust: old.robust}
+	f.forward = model.with(p)
+	model.carry(&f.forward, old.params[:], next.params[:])
+	threshold := 0.0
+	if old.robust {
+		threshold = f.huberThreshold(seen.typical)
+	}
+	if f.solve(next, threshold, finalIterations) {
+		before, left := seen.systematic(), f.seen.systematic()
+		explained := !seen.significant() || left*left < before*before*(1-leastExplained)
+		if f.seen.gain(seen.rms*seen.rms, f.seen.rms*f.seen.rms) > leastGain/2 && explained {
+			f.best = *next
+			return true
+		}
+	}
+	f.forward, f.best = model, old
+	f.solve(&f.best, threshold, finalIterations)
+	return false
+}
+
+// extras looks at the optional parameters through the linearised fit: with c the derivative of the residual e by the new parameter and c' what
+// is left of c beside the columns of the model, the parameter would move by -c'e/c'c', to a gain of n ln of the ratio of the sums of squares.
+func (f *Fitter) extras() (found [len(optional)]extra) {
+	full := f.forward
+	full.conductance, full.phase, full.stretched = true, true, full.memory
+	rows := 2 * f.points.n
+	f.wide = grown(f.wide, rows*(full.parameters()+1))
+	residual, jacobian := f.wide[:rows], f.wide[rows:]
+	params := &f.tried.solution[0].params
+	f.forward.carry(&full, f.best.params[:], params[:])
+	full.Evaluate(params[:full.parameters()], residual, jacobian)
+	for i, p := range optional {
+		if full.has(p) && !f.forward.has(p) {
+			found[i] = f.beside(&full, p, residual, jacobian)
+		}
+	}
+	return found
+}
+
+// beside examines one column of a Jacobian beside those of the model.
+func (f *Fitter) beside(full *forward, p Parameter, residual, jacobian []float64) (e extra) {
+	rows := len(residual)
+	column := full.columnOf(jacobian, p)
+	var response [mostParameters]float64
+	n := f.forward.parameters()
+	f.workspace.Response(response[:n], column)
+	f.shift = grown(f.shift, rows)
+	copy(f.shift, column)
+	for q := ResonanceHz; q <= logStretch; q++ {
+		if k := f.forward.column(q); k >= 0 {
+			by := response[k]
+			for i, d := range full.columnOf(jacobian, q) {
+				f.shift[i] += by * d
+			}
+		}
+	}
+	limit := f.seen.limit
+	var whole, left, product float64
+	for i := 0; i < rows; i += 2 {
+		if r := residual[i]*residual[i] + residual[i+1]*residual[i+1]; r > limit {
+			continue // wild
+		}
+		whole += column[i]*column[i] + column[i+1]*column[i+1]
+		re, im := f.shift[i], f.shift[i+1]
+		left += re*re + im*im
+		product += re*residual[i] + im*residual[i+1]
+	}
+	if !(left > 0 && whole > 0) {
+		return e
+	}
+	sum := f.seen.sumOfSquares
+	remaining := math.Max(sum-product*product/left, 1e-12*sum)
+	freedom := math.Max(float64(2*f.seen.points-n-1), 1)
+	return extra{
+		value: -product / left, deviation: math.Sqrt(remaining / freedom / left),
+		part: math.Sqrt(left / whole), gain: f.seen.gain(sum, remaining),
+	}
+}

@@ -1,0 +1,198 @@
+package resonance
+
+import (
+	"fmt"
+	"math"
+	"time"
+
+	"example.com/admit/service/leastsquares"
+	"example.com/admit/service/sweep"
+)
+
+// settledTimeConstants is the dwell, in loaded time constants, from which the resonator counts as settled: what is left then moves fs by less
+// than 0.001 ppm.
+const settledTimeConstants = 7.0
+
+// memoryTimeConstants is the dwell below which the memory of the resonator is put into the model where it can be.
+const memoryTimeConstants = 12.0
+
+// remembers says whether the resonator's memory can be modelled at all. A source that restarts its phase leaves it undefined, and samples
+// stated as admittances or impedances do not tell what the resonator was loaded with while it rang.
+func (f *Fitter) remembers() bool {
+	if f.request.Sweep.Timing.Phase == sweep.PhaseRestarted {
+		return false
+	}
+	return f.request.ScaleUnknown || !f.points.impedance && f.points.sourceAt(0) != 0
+}
+
+// rememberStated fits again with the memory of the resonator in the model if the dwell is stated and short, and the source's phase
+// stated to be continuous.
+func (f *Fitter) rememberStated() {
+	t := timingOf(f.request.Sweep.Timing)
+	stated := t.dwell > 0 && f.request.Sweep.Timing.Phase == sweep.PhaseContinuous
+	if !stated || !f.remembers() || t.dwell >= memoryTimeConstants*f.best.loaded.timeConstant() {
+		return
+	}
+	plain := f.save()
+	f.tried.n = 0
+	if f.startRinging(&plain, t, false) || f.choose() && f.seen.rms < plain.seen.rms {
+		if f.request.ScaleUnknown {
+			f.stretch()
+		}
+		return
+	}
+	f.restore(&plain)
+}
+
+// stretch frees the timing of a shape where the likelihood asks for it; in a known network extend does that.
+func (f *Fitter) stretch() {
+	stated := f.save()
+	next := &f.tried.solution[0]
+	*next = solution{params: f.best.params}
+	f.shape.stretched = true
+	next.params[shapeStretch] = 0
+	if f.solve(next, 0, finalIterations) && f.seen.gain(stated.seen.rms*stated.seen.rms, f.seen.rms*f.seen.rms) > leastGain {
+		f.best = *next
+		return
+	}
+	f.restore(&stated)
+}
+
+// rememberUnstated tries whether a memory explains what a settled model leaves systematic in a sweep of which no timing, or only the dwell, is
+// stated: then both the dwell and the unit can be had from the samples, and that the source's phase is continuous is shown by
+// them. It must explain nearly all, for much is free.
+func (f *Fitter) rememberUnstated() {
+	const (
+		leastSystematic = 0.001 // of the response
+		mostLeft        = 0.1   // of the power of what was systematic
+	)
+	before := f.seen.systematic()
+	if !f.remembers() || f.memory() || before < leastSystematic*f.best.loaded.response {
+		return
+	}
+	plain := f.save()
+	f.tried.n = 0
+	convinced := false
+	if stated := timingOf(f.request.Sweep.Timing); stated.dwell > 0 {
+		convinced = f.startRinging(&plain, stated, false)
+	} else {
+		tau := plain.best.loaded.timeConstant()
+		for _, ratio := range [...]float64{0.5, 0.1, 2, 0.02} {
+			if convinced = f.startRinging(&plain, timing{dwell: ratio * tau, averaging: ratio * tau}, true); convinced {
+				break
+			}
+			// Times of other ratios count from another dwell: the choice is among those of one.
+			if f.choose() && f.seen.systematic() < before/10 {
+				convinced = true
+				break
+			}
+			f.tried.n = 0
+		}
+	}
+	if convinced || f.choose() {
+		if left := f.seen.systematic(); left*left <= mostLeft*before*before {
+			return
+		}
+	}
+	f.restore(&plain)
+}
+
+// saved is a fit that may be returned to.
+type saved struct {
+	forward forward
+	shape   shape
+	best    solution
+	seen    residuals
+}
+
+func (f *Fitter) save() saved { return saved{f.forward, f.shape, f.best, f.seen} }
+
+// restore brings a fit back, into the workspace as well.
+func (f *Fitter) restore(s *saved) {
+	f.forward, f.shape, f.best = s.forward, s.shape, s.best
+	threshold := 0.0
+	if s.best.robust {
+		threshold = f.huberThreshold(s.seen.typical)
+	}
+	f.solve(&f.best, threshold, finalIterations)
+}
+
+// memory says whether the resonator's memory is in the model.
+func (f *Fitter) memory() bool {
+	if f.request.ScaleUnknown {
+		return f.shape.memory
+	}
+	return f.forward.memory
+}
+
+// startRinging switches the memory on and fits from several starts. The settled fit of a fast sweep sits too late, by up to two of the bandwidths
+// that it sees, and too wide, by any factor once the whole sweep is shorter than the ringing; so the starts lie earlier and narrower.
+// true says that one of them convinces; the others are in f.tried.
+func (f *Fitter) startRinging(plain *saved, t timing, free bool) bool {
+	// What G0 and phase have taken up of the ringing they give back.
+	f.forward = forward{points: &f.points, memory: true, timing: t, stretched: free}
+	f.shape.memory, f.shape.timing, f.shape.stretched = true, t, free
+	later := 1.0
+	if o := f.points.offsetHz; o[len(o)-1] < o[0] {
+		later = -1
+	}
+	for _, from := range [...]struct{ back, width float64 }{{0, 1}, {0.3, 1}, {1, 1}, {0.5, 0.5}, {1, 0.2}, {1.5, 0.2}, {1, 0.1}} {
+		s := &f.tried.solution[f.tried.n]
+		*s = solution{}
+		move := -later * from.back * 2 * plain.best.loaded.halfHz
+		if f.request.ScaleUnknown {
+			s.params = plain.best.params
+			s.params[shapeLogHalf] += math.Log(from.width)
+			// The area under the response stays.
+			s.params[shapeAmplitude] /= from.width
+			s.params[shapeAmplitude+1] /= from.width
+		} else {
+			plain.forward.carry(&f.forward, plain.best.params[:], s.params[:])
+			s.params[LogInductance] -= math.Log(from.width)
+		}
+		s.params[ResonanceHz] += move
+		if f.attempt() || f.explained(plain) {
+			return true
+		}
+	}
+	return false
+}
+
+// explained says that the last attempt leaves so little of what the settled model left that no other can be meant. It is then the best.
+func (f *Fitter) explained(plain *saved) bool {
+	const (
+		share = 0.005 // of the response
+		times = 5.0
+	)
+	if f.tried.n == 0 {
+		return false
+	}
+	s := &f.tried.solution[f.tried.n-1]
+	if s.result.Status == leastsquares.Converged && f.seen.rms < share*s.loaded.response && times*f.seen.rms < plain.seen.rms {
+		f.best = *s
+		return true
+	}
+	return false
+}
+
+// tooFast says that the resonator still rang from earlier points and that nothing in the model stands for it.
+func (f *Fitter) tooFast(est *Estimate, visible float64) bool {
+	t := f.request.Sweep.Timing
+	q := &est.Quality
+	explained := q.Memory && f.seen.systematic() <= misfitShare*visible
+	if t.Dwell <= 0 || explained || q.SettlingTimeConstants >= settledTimeConstants {
+		return false
+	}
+	needed := time.Duration(settledTimeConstants * f.best.loaded.timeConstant() * 1e9).Round(time.Microsecond)
+	est.State = SweptTooFast
+	est.Detail = fmt.Sprintf("a dwell of %v is %.2g loaded time constants; a settled sweep needs %v", t.Dwell, q.SettlingTimeConstants, needed)
+	switch {
+	case q.Memory:
+		est.Detail += ", and the timing stated does not explain what the resonator kept from earlier points"
+	case t.Phase == sweep.PhaseRestarted:
+		est.Detail += ", since the source restarts its phase at each step"
+	case t.Phase == sweep.PhaseUnstated:
+		est.Detail += ", unless the source is stated to go on with its phase at each step"
+	}
+	return true
+}
