@@ -57,7 +57,9 @@ func TestDispositions(t *testing.T) {
 					b.MeasuredAt = b.MeasuredAt.Add(time.Duration(i) * time.Hour)
 				})))
 				// A look for another purpose disposes of nothing.
-				keep(t, s, plant.Inspection(func(b *inspection.Begin) { b.Unit.Serial, b.Purpose = "TM0000001", inspection.Engineering }).Fail())
+				keep(t, s, plant.Inspection(func(b *inspection.Begin) {
+					b.Unit.Serial, b.Purpose, b.MeasuredAt = "TM0000001", inspection.Engineering, b.MeasuredAt.Add(time.Duration(i)*time.Hour)
+				}).Fail())
 				if i%2 == 0 {
 					if _, err := s.CloseVolume(t.Context()); err != nil {
 						t.Fatal(err)
@@ -77,6 +79,21 @@ func TestDispositions(t *testing.T) {
 				if got != step.want {
 					t.Errorf("after inspection %d: %q, want %q", i+1, got, step.want)
 				}
+			}
+			// Hour by hour too: what is taken back is taken back where it was reached.
+			got := ""
+			for i := range c.steps {
+				from := time.Date(2026, 11, 30, 9+i, 0, 0, 0, time.UTC)
+				counts, err := s.CountDispositions(t.Context(), inspection.CountFilter{From: from, Until: from.Add(time.Hour)})
+				if err != nil {
+					t.Fatal(err)
+				}
+				for _, d := range counts {
+					got += fmt.Sprintf("%s %s %s", d.Station, d.Lot, d.Disposition)
+				}
+			}
+			if want := c.steps[len(c.steps)-1].want; got != want {
+				t.Errorf("hour by hour: %q, want %q", got, want)
 			}
 			// Index and counters follow from the records: the volumes check that by themselves.
 			for _, sh := range s.writer.shelf.all() {
@@ -156,7 +173,11 @@ func TestCounterKey(t *testing.T) {
 func TestCountWhileRecording(t *testing.T) {
 	t.Parallel()
 	s, plant := plantWith(t)
-	const recorders, each = 4, 40
+	const recorders = 4
+	each := 40
+	if testing.Short() {
+		each = 10
+	}
 	var list [recorders][]storagetest.Inspection
 	for i := range list {
 		for range each {
@@ -201,7 +222,7 @@ func TestCountWhileRecording(t *testing.T) {
 			t.Fatalf("counted %d: %d were acknowledged before, %d sent, the last sequence is %d", n, least, most, last)
 		}
 	}
-	if got := acknowledged.Load(); got != recorders*each || rounds < 3 {
+	if got := acknowledged.Load(); got != int64(recorders*each) || rounds < 3 {
 		t.Errorf("%d recorded, %d counts", got, rounds)
 	}
 }

@@ -42,7 +42,7 @@ func TestNothingUnacknowledgedIsShown(t *testing.T) {
 		}
 		listed, err1 := s.List(ctx, inspection.Filter{}, 0, 10)
 		narrow, err2 := s.List(ctx, inspection.Filter{Station: "N2"}, 0, 10)
-		after, err3 := s.After(ctx, first.Sequence, 10)
+		after, err3 := s.After(ctx, 0, 10)
 		counts, err4 := s.Count(ctx, inspection.CountFilter{})
 		units, err5 := s.CountDispositions(ctx, inspection.CountFilter{})
 		if err := errors.Join(err, err1, err2, err3, err4, err5); err != nil {
@@ -51,7 +51,7 @@ func TestNothingUnacknowledgedIsShown(t *testing.T) {
 		seen[1], seen[2], seen[3], seen[4], seen[5] = len(listed), len(narrow), len(after), len(counts), len(units)
 		return seen
 	}
-	if got := see(); got != [6]int{0, 1, 0, 0, 1, 1} || s.Last() != first.Sequence {
+	if got := see(); got != [6]int{0, 1, 0, 1, 1, 1} || s.Last() != first.Sequence {
 		t.Errorf("while recording stands still, found, listed, listed of N2, after, counts, units are %v, last %d", got, s.Last())
 	}
 	_, err := s.Sweeps(t.Context(), ghost.Record.Begin.ID)
@@ -65,7 +65,7 @@ func TestNothingUnacknowledgedIsShown(t *testing.T) {
 	if err := s.Reopen(t.Context()); err != nil {
 		t.Fatal(err)
 	}
-	if got := see(); got != [6]int{1, 2, 1, 1, 2, 2} {
+	if got := see(); got != [6]int{1, 2, 1, 2, 2, 2} {
 		t.Errorf("after Reopen they are %v", got)
 	}
 	if again, err := s.Record(t.Context(), ghost.Record, ghost.Sweeps); err != nil || !again.Already {

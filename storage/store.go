@@ -28,6 +28,8 @@ type Options struct {
 	// SetAsideDamaged makes the store go on in a new volume when the open one is damaged. What cannot be read of that one is then missing from
 	// lists and counts without an error.
 	SetAsideDamaged bool
+	// Committed, where set, hears of every commit once it is on disk: how long it took and how many inspections shared it. It must not block.
+	Committed func(took time.Duration, inspections int)
 	// Logger gets what an operator should know. Default: none.
 	Logger *slog.Logger
 }
@@ -87,7 +89,7 @@ func open(o Options, change func(*WriterOptions)) (*Store, error) {
 		// Prepare asks for units, people for serials and lots: of volumes that hold none, at most 64 bytes are read.
 		FilterTerms: [][]byte{[]byte(termUnit), []byte(termSerial), []byte(termLot)},
 		VolumeBytes: o.VolumeBytes, VolumeAge: o.VolumeAge, SetAsideDamaged: o.SetAsideDamaged,
-		Clock: o.Clock.Now, Logger: o.Logger,
+		Clock: o.Clock.Now, Committed: o.Committed, Logger: o.Logger,
 	}
 	if change != nil {
 		change(&wo)

@@ -59,6 +59,8 @@ type WriterOptions struct {
 	SetAsideDamaged bool
 	// Clock dates volumes and measures ages. Default time.Now.
 	Clock func() time.Time
+	// Committed, where set, hears of every commit once it is on disk: how long it took and how many entries shared it. It must not block.
+	Committed func(took time.Duration, entries int)
 	// Logger gets what an operator should know. Default: none.
 	Logger *slog.Logger
 	// Files is the file system of the store's own formats: mark, checksums, filters. Default disk.OS().

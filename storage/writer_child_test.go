@@ -25,10 +25,17 @@ func runChild(what string) int {
 	switch name {
 	case "record":
 		err = childRecord(strings.Fields(arguments))
-	case "fill-limit":
-		err = childFill(arguments, limitFiles{}, 5)
-	case "fill-tmpfs":
-		err = childTmpfs(arguments)
+	case "fill-limit", "fill-tmpfs":
+		var cycles int
+		number, folder, _ := strings.Cut(arguments, " ")
+		if cycles, err = strconv.Atoi(number); err != nil {
+			break
+		}
+		if name == "fill-limit" {
+			err = childFill(folder, limitFiles{}, cycles)
+		} else {
+			err = childTmpfs(folder, cycles)
+		}
 	default:
 		err = fmt.Errorf("unknown child %q", what)
 	}
@@ -129,14 +136,14 @@ func (ballast) squeeze(folder string) error {
 func (ballast) release(folder string) error { return os.Remove(folder + ".ballast") }
 
 // childTmpfs mounts a small file system in a name space of its own and fills it.
-func childTmpfs(folder string) error {
+func childTmpfs(folder string, cycles int) error {
 	if err := unix.Mount("none", "/", "", unix.MS_REC|unix.MS_PRIVATE, ""); err != nil {
 		return err
 	}
 	if err := unix.Mount("tmpfs", folder, "tmpfs", 0, "size=24m"); err != nil {
 		return err
 	}
-	return childFill(filepath.Join(folder, "store"), ballast{}, 20)
+	return childFill(filepath.Join(folder, "store"), ballast{}, cycles)
 }
 
 // childFill fills the store and makes room again, several times. While there is none, nothing is acknowledged and everything recorded can be

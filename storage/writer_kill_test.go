@@ -237,8 +237,12 @@ func TestKillAtCreation(t *testing.T) {
 // fillChild runs one of the children that fill a disk.
 func fillChild(t *testing.T, what string, attributes *syscall.SysProcAttr) {
 	t.Helper()
+	cycles := 20
+	if testing.Short() {
+		cycles = 3
+	}
 	command := exec.Command(os.Args[0])
-	command.Env = append(os.Environ(), childVariable+"="+what)
+	command.Env = append(os.Environ(), fmt.Sprintf("%s=%s %d %s", childVariable, what, cycles, t.TempDir()))
 	command.SysProcAttr = attributes
 	out, err := command.CombinedOutput()
 	if err != nil {
@@ -250,7 +254,7 @@ func fillChild(t *testing.T, what string, attributes *syscall.SysProcAttr) {
 // TestFileLimit meets the limit on file sizes, which bbolt reports without its number when it resizes.
 func TestFileLimit(t *testing.T) {
 	t.Parallel()
-	fillChild(t, "fill-limit "+t.TempDir(), nil)
+	fillChild(t, "fill-limit", nil)
 }
 
 // TestFullDisk fills a small file system in a name space of its own.
@@ -262,7 +266,7 @@ func TestFullDisk(t *testing.T) {
 	}
 	id := []syscall.SysProcIDMap{{ContainerID: 0, HostID: os.Getuid(), Size: 1}}
 	gid := []syscall.SysProcIDMap{{ContainerID: 0, HostID: os.Getgid(), Size: 1}}
-	fillChild(t, "fill-tmpfs "+t.TempDir(), &syscall.SysProcAttr{
+	fillChild(t, "fill-tmpfs", &syscall.SysProcAttr{
 		Cloneflags: syscall.CLONE_NEWUSER | syscall.CLONE_NEWNS, UidMappings: id, GidMappings: gid,
 	})
 }

@@ -141,6 +141,7 @@ func (w *Writer) commit(r *round) error {
 	for i, d := range r.drafts {
 		entries[i] = d.entry
 	}
+	began := w.options.Clock()
 	err := current.volume.Append(entries)
 	switch {
 	case err == nil:
@@ -161,6 +162,9 @@ func (w *Writer) commit(r *round) error {
 		return w.fail(err)
 	}
 	w.publish()
+	if w.options.Committed != nil {
+		w.options.Committed(max(0, w.options.Clock().Sub(began)), len(entries))
+	}
 	return nil
 }
 

@@ -191,21 +191,8 @@ func TestWaitingIsBounded(t *testing.T) {
 	o := options(t)
 	o.QueueBytes = 100_000
 	w := openWriter(t, o)
-	held, release := make(chan struct{}), make(chan struct{})
+	release := hold(t, w)
 	var group sync.WaitGroup
-	group.Go(func() {
-		s := submission("held")
-		prepare := s.Prepare
-		s.Prepare = func(sequence uint64, look Lookup) (volume.Entry, error) {
-			close(held)
-			<-release
-			return prepare(sequence, look)
-		}
-		if _, err := w.Submit(context.Background(), s); err != nil {
-			t.Error(err)
-		}
-	})
-	<-held
 	big := submission("too large")
 	big.Bytes = 100_001
 	if _, err := w.Submit(context.Background(), big); !errors.Is(err, ErrTooLarge) {
@@ -220,9 +207,7 @@ func TestWaitingIsBounded(t *testing.T) {
 			}
 		})
 	}
-	for status := w.Status(); status.Waiting < 4; status = w.Status() {
-		time.Sleep(time.Millisecond)
-	}
+	awaitQueue(t, w, 4)
 	if s := w.Status(); s.WaitingBytes > o.QueueBytes {
 		t.Errorf("%d bytes wait, at most %d may", s.WaitingBytes, o.QueueBytes)
 	}
@@ -233,7 +218,7 @@ func TestWaitingIsBounded(t *testing.T) {
 	if _, err := w.Submit(ctx, s); !errors.Is(err, ErrBusy) || !errors.Is(err, context.DeadlineExceeded) {
 		t.Errorf("no room: %v", err)
 	}
-	close(release)
+	release()
 	group.Wait()
 	if s := w.Status(); s.Waiting != 0 || s.WaitingBytes != 0 || s.Last != 9 {
 		t.Errorf("status %+v", s)

@@ -286,6 +286,88 @@ func TestOnce(t *testing.T) {
 	}
 }
 
+// hold makes the writer wait in a submission's Prepare, so that what is submitted meanwhile goes into one commit. The returned function lets it
+// go on and waits for the submission.
+func hold(t *testing.T, w *Writer) (release func()) {
+	t.Helper()
+	held, goOn, done := make(chan struct{}), make(chan struct{}), make(chan struct{})
+	go func() {
+		defer close(done)
+		s := submission("held up")
+		prepare := s.Prepare
+		s.Prepare = func(sequence uint64, look Lookup) (volume.Entry, error) {
+			close(held)
+			<-goOn
+			return prepare(sequence, look)
+		}
+		if _, err := w.Submit(context.Background(), s); err != nil {
+			t.Error(err)
+		}
+	}()
+	<-held
+	return func() {
+		close(goOn)
+		<-done
+	}
+}
+
+// awaitQueue waits until that many submissions wait.
+func awaitQueue(t *testing.T, w *Writer, n int) {
+	t.Helper()
+	for deadline := time.Now().Add(10 * time.Second); w.Status().Waiting < n; time.Sleep(time.Millisecond) {
+		if time.Now().After(deadline) {
+			t.Fatalf("%d submissions wait, want %d", w.Status().Waiting, n)
+		}
+	}
+}
+
+// TestOnceInOneCommit brings equal ids into the same commit: the first is recorded, the others get its place, other content is refused. The
+// first may fail in Prepare: then the next of the same id has its turn.
+func TestOnceInOneCommit(t *testing.T) {
+	t.Parallel()
+	w := openWriter(t, options(t))
+	release := hold(t, w)
+	var group sync.WaitGroup
+	inOrder := func(n int, s Submission, judge func(Result, error)) {
+		group.Go(func() { judge(w.Submit(context.Background(), s)) })
+		awaitQueue(t, w, n)
+	}
+	refusing := submission("twice")
+	refusing.Prepare = func(uint64, Lookup) (volume.Entry, error) { return volume.Entry{}, errors.New("no") }
+	other := submission("twice")
+	other.ContentHash[5]++
+	var first, second Result
+	inOrder(2, refusing, func(r Result, err error) {
+		if err == nil {
+			t.Errorf("a refused submission was recorded as %+v", r)
+		}
+	})
+	inOrder(3, submission("twice"), func(r Result, err error) {
+		if first = r; err != nil || r.AlreadyRecorded {
+			t.Errorf("first: %+v, %v", r, err)
+		}
+	})
+	inOrder(4, submission("twice"), func(r Result, err error) {
+		if second = r; err != nil || !r.AlreadyRecorded {
+			t.Errorf("second: %+v, %v", r, err)
+		}
+	})
+	inOrder(5, other, func(r Result, err error) {
+		if !errors.Is(err, ErrDifferentContent) {
+			t.Errorf("other content: %+v, %v", r, err)
+		}
+	})
+	release()
+	group.Wait()
+	if first.Sequence != second.Sequence {
+		t.Errorf("first %+v, second %+v", first, second)
+	}
+	holds(t, w, "twice", first)
+	if got := total(t, w); got != 2 {
+		t.Errorf("counted %d, want 2", got)
+	}
+}
+
 // TestPrepareSeesWhatCameBefore counts attempts of one unit from many goroutines: each sees all earlier ones, those of its own commit
 // and those in closed volumes included.
 func TestPrepareSeesWhatCameBefore(t *testing.T) {

@@ -4,6 +4,7 @@ import (
 	"crypto/tls"
 	"crypto/x509"
 	"fmt"
+	"net"
 	"os"
 
 	"github.com/spf13/cobra"
@@ -31,6 +32,9 @@ func (a *access) flags(c *cobra.Command) {
 // dial prepares a connection.
 func (a *access) dial() (*station.Client, error) {
 	if a.certificate == "" && a.key == "" && a.serverAuthorities == "" {
+		if host, _, err := net.SplitHostPort(a.address); err != nil || !config.Loopback(host) {
+			return nil, badInput{fmt.Errorf("--server %s: want a loopback host:port, or --certificate, --key and --authorities for TLS", a.address)}
+		}
 		return station.Dial(a.address, nil)
 	}
 	if a.certificate == "" || a.key == "" || a.serverAuthorities == "" {
@@ -56,6 +60,9 @@ func answered(err error) error {
 	switch status.Code(err) {
 	case codes.InvalidArgument, codes.FailedPrecondition, codes.AlreadyExists, codes.NotFound, codes.PermissionDenied:
 		return badInput{fmt.Errorf("the server refuses: %s", status.Convert(err).Message())}
+	}
+	if status.Code(err) == codes.Unavailable {
+		return fmt.Errorf("no answer from the server (is it running, and does it ask for TLS?): %s", status.Convert(err).Message())
 	}
 	return err
 }

@@ -6,6 +6,7 @@ import (
 	"io"
 	"math/rand/v2"
 	"os"
+	"strings"
 	"sync"
 	"time"
 
@@ -19,6 +20,7 @@ import (
 	"example.com/admit/service/network"
 	"example.com/admit/service/parttype"
 	"example.com/admit/service/sweep"
+	"example.com/admit/service/verdict"
 )
 
 // demoCommand runs a server and simulated stations in a temporary store.
@@ -82,12 +84,16 @@ func demo(ctx context.Context, out io.Writer, address string, seed uint64, pace 
 		return err
 	}
 	ctx, cancel := context.WithCancel(ctx)
-	defer cancel()
-	served := make(chan error, 1)
+	served := make(chan struct{})
+	var failure error
 	go func() {
-		err := server.run(ctx)
+		defer close(served)
+		failure = server.run(ctx)
 		cancel()
-		served <- err
+	}()
+	defer func() { // the store goes only after the server
+		cancel()
+		<-served
 	}()
 	client, err := station.Dial(server.stations.Addr().String(), nil)
 	if err != nil {
@@ -99,21 +105,22 @@ func demo(ctx context.Context, out io.Writer, address string, seed uint64, pace 
 
 	var group sync.WaitGroup
 	var mu sync.Mutex
+	say := func(line string) {
+		mu.Lock()
+		defer mu.Unlock()
+		fmt.Fprintln(out, line)
+	}
 	for i, s := range stations {
 		group.Go(func() {
-			err := work(ctx, client, s, i, pace, func(line string) {
-				mu.Lock()
-				defer mu.Unlock()
-				fmt.Fprintln(out, line)
-			})
-			if err != nil && ctx.Err() == nil {
-				fmt.Fprintf(out, "station %s stopped: %v\n", s.Name, err)
+			if err := work(ctx, client, s, i, pace, say); err != nil && ctx.Err() == nil {
+				say(fmt.Sprintf("station %s stopped: %v", s.Name, err))
 			}
 		})
 	}
 	group.Wait()
 	cancel()
-	return <-served
+	<-served
+	return failure
 }
 
 // demoStations are the simulated stations, each with a random source of its own.
@@ -148,16 +155,24 @@ func work(ctx context.Context, client *station.Client, s *simulated.Station, ind
 	lot := inspection.Lot(fmt.Sprintf("L%d", 2601+index))
 	clock := time.NewTimer(time.Duration(index) * pace / time.Duration(len(floor)))
 	defer clock.Stop()
-	for n := 1 + index; ; n += len(floor) {
+	var in simulated.Insert
+	again := false // the same unit, put in once more
+	for n := 1 + index; ; {
 		select {
 		case <-ctx.Done():
 			return nil
 		case <-clock.C:
 		}
 		clock.Reset(pace)
-		in := units.Draw()
-		if fault, ok := opening[index]; ok && n == 1+index {
+		fault, first := opening[index]
+		switch {
+		case again && in.Kind != simulated.Whole:
+			in = units.Make(simulated.Sound) // the operator puts the unit in as it should be
+		case again:
+		case first && n == 1+index:
 			in = units.Make(fault)
+		default:
+			in = units.Draw()
 		}
 		unit, err := demoUnit(s, part, &cal, in, n, lot)
 		if err != nil {
@@ -167,11 +182,10 @@ func work(ctx context.Context, client *station.Client, s *simulated.Station, ind
 		if err != nil {
 			return err
 		}
-		reason := ""
-		if reasons := answer.Judgement.Reasons(); len(reasons) > 0 {
-			reason = reasons[0]
+		say(fmt.Sprintf("%s  %-6s  %s  %s", s.Name, answer.Judgement.Verdict, unit.Begin.Unit.Name(), strings.Join(answer.Judgement.Reasons(), " ")))
+		if again = answer.Judgement.Verdict == verdict.Retest && !again; !again {
+			n += len(floor)
 		}
-		say(fmt.Sprintf("%s  %-6s  %s  %s", s.Name, answer.Judgement.Verdict, unit.Begin.Unit.Name(), reason))
 	}
 }
 

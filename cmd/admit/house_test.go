@@ -41,6 +41,7 @@ var rules = []rule{
 		module + "/api/...", module + "/service/wire", module + "/service/rpc", module + "/service/web", module + "/service/metrics",
 		"google.golang.org/grpc/...", "google.golang.org/protobuf/...", "go.etcd.io/bbolt/...", "github.com/prometheus/...", "net/http/...", "log/slog",
 	}, "the core knows neither wire nor store nor screen, and logs nothing"},
+	{[]string{"service/web", "service/metrics", "service/floor"}, []string{module + "/service/rpc"}, "one edge does not know another; what they share is the domain's"},
 	{[]string{"service/..."}, []string{module + "/fixtures/...", module + "/storage/...", module + "/cmd/..."}, "service declares ports; fixtures and storage are handed in by cmd"},
 	{[]string{"fixtures/simulated"}, []string{module + "/service/resonance", module + "/service/survey"}, "a program must not check itself"},
 	{[]string{"storage/volume/...", "storage/catalogue"}, []string{module + "/service/...", module + "/api/..."}, "a volume keeps opaque records"},

@@ -43,9 +43,19 @@ func judgeCommand() *cobra.Command {
 
 // judgeFolder reads and judges a folder; nothing is stored.
 func judgeFolder(c *cobra.Command, dir string) (*inspection.Record, error) {
-	unit, err := readFolder(dir)
+	unit, err := folder.Read(dir)
 	if err != nil {
-		return nil, err
+		return nil, badInput{err}
+	}
+	if unit.Begin.ID == (inspection.ID{}) { // optional in a folder that is only judged
+		id, err := uuid.NewV7()
+		if err != nil {
+			return nil, err
+		}
+		unit.Begin.ID = inspection.ID(id)
+	}
+	if err := unit.Begin.Check(); err != nil {
+		return nil, badInput{fmt.Errorf("%s: %w", dir, err)}
 	}
 	j, err := inspection.NewJudge().Judge(c.Context(), unit)
 	if err != nil {
@@ -57,25 +67,6 @@ func judgeFolder(c *cobra.Command, dir string) (*inspection.Record, error) {
 	r := inspection.NewRecord(unit, j)
 	r.Software = revision()
 	return r, nil
-}
-
-// readFolder reads an inspection folder and gives it an id if it has none.
-func readFolder(dir string) (*inspection.Case, error) {
-	unit, err := folder.Read(dir)
-	if err != nil {
-		return nil, badInput{err}
-	}
-	if unit.Begin.ID == (inspection.ID{}) {
-		id, err := uuid.NewV7()
-		if err != nil {
-			return nil, err
-		}
-		unit.Begin.ID = inspection.ID(id)
-	}
-	if err := unit.Begin.Check(); err != nil {
-		return nil, badInput{fmt.Errorf("%s: %w", dir, err)}
-	}
-	return unit, nil
 }
 
 // exitOf turns a verdict into an exit status.

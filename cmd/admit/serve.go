@@ -42,20 +42,18 @@ func serveCommand() *cobra.Command {
 
 // load reads file and environment, lets the flags that were given override them, and checks the whole.
 func load(c *cobra.Command, file string, override *config.Config) (config.Config, error) {
-	settings, err := config.Load(file, os.Environ())
-	if err != nil {
-		return settings, badInput{err}
-	}
-	for flag, target := range map[string]struct{ to, from *string }{
-		"store":  {&settings.Store, &override.Store},
-		"listen": {&settings.Listen, &override.Listen},
-		"http":   {&settings.HTTP, &override.HTTP},
-	} {
-		if c.Flags().Changed(flag) {
-			*target.to = *target.from
+	settings, err := config.Load(file, os.Environ(), func(settings *config.Config) {
+		for flag, target := range map[string]struct{ to, from *string }{
+			"store":  {&settings.Store, &override.Store},
+			"listen": {&settings.Listen, &override.Listen},
+			"http":   {&settings.HTTP, &override.HTTP},
+		} {
+			if c.Flags().Changed(flag) {
+				*target.to = *target.from
+			}
 		}
-	}
-	if err := settings.Check(); err != nil {
+	})
+	if err != nil {
 		return settings, badInput{err}
 	}
 	return settings, nil
@@ -87,10 +85,14 @@ func checkConfigCommand() *cobra.Command {
 	var file string
 	c := &cobra.Command{
 		Use:   "check-config",
-		Short: "Check a configuration file and list every fault",
+		Short: "Check a configuration file and the certificates it names, and list every fault",
 		Args:  bad(cobra.NoArgs),
 		RunE: func(c *cobra.Command, _ []string) error {
-			if _, err := config.Load(file, os.Environ()); err != nil {
+			settings, err := config.Load(file, os.Environ(), nil)
+			if err != nil {
+				return badInput{err}
+			}
+			if _, err := certificatesOf(settings, logger(settings.Log)); err != nil {
 				return badInput{err}
 			}
 			fmt.Fprintln(c.OutOrStdout(), "the configuration is good")

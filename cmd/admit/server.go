@@ -46,23 +46,28 @@ func build(c config.Config, log *slog.Logger) (s *server, err error) {
 	}()
 	clock := wallClock{}
 	stations := stationsOf(c)
-	numbers, err := metrics.New(metrics.Options{Stations: stations, Version: "1", Revision: revision()})
+	numbers, err := metrics.New(metrics.Options{Stations: stations, Version: version, Revision: revision()})
 	if err != nil {
 		return s, err
+	}
+	// The addresses come first: a port in use must not leave a store behind.
+	if s.stations, err = net.Listen("tcp", c.Listen); err != nil {
+		return s, fmt.Errorf("address for stations: %w", err)
+	}
+	if s.people, err = net.Listen("tcp", c.HTTP); err != nil {
+		return s, fmt.Errorf("address for people: %w", err)
+	}
+	certificates, err := certificatesOf(c, log)
+	if err != nil {
+		return s, badInput{err}
 	}
 	s.store, err = storage.Open(storage.Options{
 		Folder: c.Store, Revision: revision(), Clock: clock, Logger: log,
 		VolumeBytes: int64(c.Volume.MaximumMegabytes) << 20, VolumeAge: c.Volume.MaximumAge,
+		Committed: numbers.Committed,
 	})
 	if err != nil {
-		return s, fmt.Errorf("store %s: %w", c.Store, err)
-	}
-	var certificates *rpc.Certificates
-	if !s.plain {
-		files := rpc.CertificateFiles{Certificate: c.TLS.Certificate, Key: c.TLS.Key, CallerCAs: c.TLS.ClientAuthorities}
-		if certificates, err = rpc.OpenCertificates(files, log, time.Now); err != nil {
-			return s, badInput{err}
-		}
+		return s, err
 	}
 	desk := &inspection.Desk{Judge: inspection.NewJudge(), Recorder: s.store, Catalogue: s.store, Clock: clock, Observer: numbers, Software: revision()}
 	s.rpc, err = rpc.New(rpc.Options{Desk: desk, Archive: s.store, Publisher: s.store, Stations: stations, Access: accessOf(c), TLS: certificates, Log: log})
@@ -82,16 +87,18 @@ func build(c config.Config, log *slog.Logger) (s *server, err error) {
 	if s.http, err = s.doors(numbers, clock); err != nil {
 		return s, err
 	}
-	if s.stations, err = net.Listen("tcp", c.Listen); err != nil {
-		return s, err
-	}
-	if s.people, err = net.Listen("tcp", c.HTTP); err != nil {
-		return s, err
-	}
 	if !s.plain {
 		s.http.TLSConfig = certificates.Config()
 	}
 	return s, nil
+}
+
+// certificatesOf opens the certificate files that a configuration names; nil where it names none.
+func certificatesOf(c config.Config, log *slog.Logger) (*rpc.Certificates, error) {
+	if c.TLS == (config.TLS{}) {
+		return nil, nil
+	}
+	return rpc.OpenCertificates(rpc.CertificateFiles{Certificate: c.TLS.Certificate, Key: c.TLS.Key, CallerCAs: c.TLS.ClientAuthorities}, log, time.Now)
 }
 
 // doors puts pages, the JSON mapping and metrics behind one address.
@@ -154,7 +161,6 @@ func (s *server) run(ctx context.Context) error {
 	})
 	s.log.Info("serving", slog.String("stations", s.stations.Addr().String()), slog.String("http", s.people.Addr().String()), slog.String("revision", revision()))
 	group.Wait()
-	s.log.Info("stopped")
 	return errors.Join(append(failures, s.close())...)
 }
 
@@ -201,7 +207,10 @@ func stationsOf(c config.Config) []inspection.Station {
 func accessOf(c config.Config) rpc.Access {
 	a := rpc.Access{Callers: map[string]rpc.Grant{}}
 	for _, k := range c.Callers {
-		g := rpc.Grant{Permissions: []rpc.Permission{rpc.Permission(k.Permission)}}
+		g := rpc.Grant{}
+		for _, p := range k.Permissions {
+			g.Permissions = append(g.Permissions, rpc.Permission(p))
+		}
 		for _, s := range k.Stations {
 			g.Stations = append(g.Stations, inspection.StationID(s))
 		}

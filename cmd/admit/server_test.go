@@ -187,7 +187,7 @@ func TestRefusalsLeaveTheConnectionUsable(t *testing.T) {
 	if code, out := p.do("replay", writeUnit(t, other, "018f3a52-7d3c-7a11-9c55-0123456789ad")); code != exitPass || !strings.Contains(out, "attempt 2") {
 		t.Errorf("the next good inspection: exit %d\n%s", code, out)
 	}
-	if code, out := p.get("/metrics"); code != http.StatusOK || !strings.Contains(out, `admit_inspections_total{station="N1",verdict="pass"} 2`) {
+	if code, out := p.get("/metrics"); code != http.StatusOK || !strings.Contains(out, `admit_inspections_total{station="N1",verdict="pass"} 2`) || !strings.Contains(out, "admit_commit_duration_seconds_count 2") {
 		t.Errorf("metrics: %d\n%s", code, out)
 	}
 	if code, out := p.get("/"); code != http.StatusOK || !strings.Contains(out, "PASS") || !strings.Contains(out, "TM0000123") {

@@ -17,6 +17,9 @@ type streams struct {
 	out, err io.Writer
 }
 
+// version is the version of the wire contract and of the store that this program serves.
+const version = "1"
+
 // revision names this build: the version control revision that Go stamped, or "unstamped".
 func revision() string {
 	info, ok := debug.ReadBuildInfo()

@@ -7,11 +7,58 @@ import (
 	"example.com/admit/service/crystal"
 	"example.com/admit/service/parttype"
 	"example.com/admit/service/resonance"
+	"example.com/admit/service/sweep"
 	"example.com/admit/service/verdict"
 )
 
 // describe fills in what was measured, beside what was judged of it.
-func describe(j *verdict.Judgement, p *parttype.PartType, est *resonance.Estimate) {
+func (w *workup) describe(j *verdict.Judgement) {
+	j.Drive, j.Modes, j.Observability = w.drive, w.modes, w.observability
+	j.ShuntCapacitanceFarad = w.shunt
+	if f := w.described(); f != nil {
+		w.describeMain(j, f.est)
+	}
+	if j.Order = w.overtoneOrder(); j.Order != nil && j.Order.Order != w.p.Overtone && j.Order.Probability > 0.9 {
+		w.remark("The part type states overtone %d. %s", w.p.Overtone, j.Order.Text)
+	}
+	w.describeReferral()
+	w.describeUnused()
+	j.Remarks = append(j.Remarks, w.remarks...)
+}
+
+// described returns the sweep that the main quantities are taken from: the one that the limits are held against, else the main sweep, else the first
+// level of the series.
+func (w *workup) described() *fitted {
+	if w.nominal != nil {
+		return w.nominal
+	}
+	if w.main >= 0 {
+		return w.fits[w.main]
+	}
+	for k := range w.series.levels {
+		if f := w.series.levels[k].fit; f != nil {
+			return f
+		}
+	}
+	return nil
+}
+
+// describeUnused counts the sweeps that nothing asked for.
+func (w *workup) describeUnused() {
+	unused := 0
+	for i := range w.c.Sweeps {
+		switch s := &w.c.Sweeps[i]; {
+		case s.Role == sweep.Drive && w.p.Drive == nil, s.Role == sweep.Unwanted:
+			unused++
+		}
+	}
+	if unused > 0 {
+		w.remark("%d further sweeps were kept; this part type has no limits that need them.", unused)
+	}
+}
+
+// describeMain fills in the quantities of the main mode, and how good the sweep was.
+func (w *workup) describeMain(j *verdict.Judgement, est *resonance.Estimate) {
 	q := est.Quality
 	if q.Points > 0 {
 		j.Quality = &verdict.Quality{
@@ -33,10 +80,34 @@ func describe(j *verdict.Judgement, p *parttype.PartType, est *resonance.Estimat
 	if j.Main == nil {
 		return
 	}
-	if !p.Condition.SeriesResonance && !est.ScaleUnknown {
-		j.Load = loadOf(p, est)
+	if !w.p.Condition.SeriesResonance && !est.ScaleUnknown {
+		j.Load = loadOf(w.p, est)
 	}
 	j.Budget = budgetOf(est)
+}
+
+// grade names the first grade that an accepted unit fits.
+func (w *workup) grade(j *verdict.Judgement) {
+	grades := w.p.Grades
+	if j.Verdict != verdict.Pass || grades == nil {
+		return
+	}
+	readings := make([][]verdict.Reading, len(grades.Of))
+	for g := range grades.Of {
+		for _, limit := range grades.Of[g].Limits {
+			r := w.mainReading(limit)
+			for i, own := range w.p.Limits {
+				// A limit on the same quantity has a mean of all attempts.
+				if past, ok := verdict.PastOf(&j.Findings[i]); ok && own.Quantity == limit.Quantity && own.Of == limit.Of && own.FromFarad == limit.FromFarad && own.ToFarad == limit.ToFarad {
+					r.Measured, r.CommonUncertainty = past.Mean, past.CommonUncertainty
+				}
+			}
+			readings[g] = append(readings[g], r)
+		}
+	}
+	if j.Grade = verdict.Grade(grades, w.p.Decision, readings); j.Grade == "" {
+		j.Remarks = append(j.Remarks, "The unit meets every limit, but fits none of the grades with certainty.")
+	}
 }
 
 // mainOf returns the quantities of the main mode; nil when one of those that every unit has cannot be told.

@@ -13,9 +13,10 @@ import (
 // gate is what must be right before a sweep means anything: calibration, reference, temperature. What is wrong becomes a retest cause;
 // the reading is made all the same where it can be, and shown, and not judged.
 type gate struct {
-	causes []verdict.RetestCause
-	solved *network.Solved // what the samples are read with; nil: nothing can be read
-	scale  bool            // the network is known, ohms have a meaning
+	causes      []verdict.RetestCause
+	calibration *network.Calibration // as stated, else the nominal network
+	solved      *network.Solved      // what the samples are read with; nil: nothing can be read
+	scale       bool                 // the network is known, ohms have a meaning
 }
 
 func (g *gate) add(cause verdict.Cause, format string, args ...any) {
@@ -23,7 +24,7 @@ func (g *gate) add(cause verdict.Cause, format string, args ...any) {
 }
 
 // open looks at everything that a case says of its station. An error is bad input.
-func (j *Judge) open(c *Case, main *sweep.Sweep) (*gate, error) {
+func (j *Judge) open(c *Case) (*gate, error) {
 	g := &gate{scale: true}
 	b := &c.Begin
 	if b.ReferenceLock != nil && !*b.ReferenceLock {
@@ -34,8 +35,9 @@ func (j *Judge) open(c *Case, main *sweep.Sweep) (*gate, error) {
 	}
 	cal := c.Calibration
 	if cal == nil {
-		cal = nominalFor(main)
+		cal = nominalFor(c)
 	}
+	g.calibration = cal
 	if len(cal.Standards) == 0 && c.PartType.CalibrationRequired {
 		g.add(verdict.CalibrationMissing, "The part type requires a calibration, and contact head %s has none.", b.ContactHead)
 	}
@@ -63,9 +65,6 @@ func (j *Judge) open(c *Case, main *sweep.Sweep) (*gate, error) {
 	case err != nil:
 		return nil, Faultf(Malformed, "calibration", "%w", err)
 	}
-	if !cal.Network.Gives(main.Quantity) {
-		return nil, Faultf(Malformed, "quantity", "a %s gives no %s", cal.Network, main.Quantity)
-	}
 	g.solved = solved
 	return g, nil
 }
@@ -88,11 +87,16 @@ func (g *gate) match(b *Begin, cal *network.Calibration) {
 
 // nominalFor is the network that stands where no calibration says which one: a reflection port for s11, the samples themselves for
 // admittances and impedances, and an unknown network for transmissions.
-func nominalFor(main *sweep.Sweep) *network.Calibration {
+func nominalFor(c *Case) *network.Calibration {
 	kind := network.Unknown
-	switch main.Quantity {
-	case sweep.S11, sweep.Admittance, sweep.Impedance:
-		kind = network.Reflection
+	for i := range c.Sweeps {
+		if s := &c.Sweeps[i]; s.Role == sweep.Main || i == 0 {
+			kind = network.Unknown
+			switch s.Quantity {
+			case sweep.S11, sweep.Admittance, sweep.Impedance:
+				kind = network.Reflection
+			}
+		}
 	}
 	return &network.Calibration{
 		Network: kind, ReferenceImpedanceOhm: 50, NominalTerminationOhm: kind.NominalTerminationOhm(),
@@ -102,10 +106,13 @@ func nominalFor(main *sweep.Sweep) *network.Calibration {
 	}
 }
 
-// suspends reports whether a station's fault suspends limits on frequency, on ohms (everything else), or both.
+// suspends reports whether what is wrong with the station or the contact suspends limits on absolute frequency, on everything else, or both.
 func suspends(c verdict.Cause) (frequencies, others bool) {
-	if c == verdict.ReferenceUnlocked {
+	switch c {
+	case verdict.ReferenceUnlocked:
 		return true, false // ratios of frequencies and impedances do not depend on the clock
+	case verdict.UnstableContact:
+		return false, true // a resistance in series moves no frequency
 	}
 	return true, true
 }

@@ -89,16 +89,18 @@ type Case struct {
 	Begin       Begin
 	PartType    *parttype.PartType
 	Calibration *network.Calibration // nil: none
-	Sweeps      []sweep.Sweep
+	Background  Background
+	Sweeps      []sweep.Sweep // in measuring order
 }
 
 // Record is a judged inspection as it is kept. Sweeps keep their samples in the store beside the record; when a Record is read back
 // without them, FrequencyHz, Re and Im are nil and Points still tells how many there are.
 type Record struct {
-	Begin           Begin    // as the fixture said it
-	PartType        Applied  // what Begin.PartType stood for
-	CalibrationHash [32]byte // zero: the nominal network
-	ContentHash     [32]byte // over the canonical content: Begin and sweeps
+	Begin           Begin      // as the fixture said it
+	PartType        Applied    // what Begin.PartType stood for
+	CalibrationHash [32]byte   // zero: the nominal network
+	ContentHash     [32]byte   // over the canonical content: Begin and sweeps
+	Background      Background // what the judgement knew of earlier inspections
 	Sweeps          []SweepHeader
 	Judgement       verdict.Judgement
 	Software        string // revision that judged

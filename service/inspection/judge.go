@@ -2,9 +2,10 @@ package inspection
 
 import (
 	"context"
-	"errors"
 	"fmt"
+	"runtime"
 	"sync"
+	"weak"
 
 	"example.com/admit/service/network"
 	"example.com/admit/service/parttype"
@@ -18,32 +19,20 @@ import (
 type Judge struct {
 	benches sync.Pool // of *bench
 	mu      sync.Mutex
-	solved  map[*network.Calibration]*network.Solved
-	order   []*network.Calibration // of solved, oldest first
-}
-
-// bench is what one fit at a time needs, reused.
-type bench struct {
-	fitter        resonance.Fitter
-	terms         network.Terms
-	contributions []network.Contribution
-	estimate      resonance.Estimate
-	frequencyHz   []float64
+	solved  map[weak.Pointer[network.Calibration]]*network.Solved // as long as the calibration itself lives
 }
 
 // NewJudge returns a Judge.
 func NewJudge() *Judge {
-	return &Judge{benches: sync.Pool{New: func() any { return new(bench) }}, solved: map[*network.Calibration]*network.Solved{}}
+	return &Judge{benches: sync.Pool{New: func() any { return new(bench) }}, solved: map[weak.Pointer[network.Calibration]]*network.Solved{}}
 }
 
-// keptCalibrations is how many solved calibrations a Judge remembers: more than a plant has contact heads.
-const keptCalibrations = 2048
-
 // solve returns the solved calibration, from memory if this very calibration was seen before: a Catalogue hands out one shared, immutable
-// calibration for each id.
+// calibration for each id. One that came alone, with a single case, is forgotten with it.
 func (j *Judge) solve(c *network.Calibration) (*network.Solved, error) {
+	key := weak.Make(c)
 	j.mu.Lock()
-	s := j.solved[c]
+	s := j.solved[key]
 	j.mu.Unlock()
 	if s != nil {
 		return s, nil
@@ -54,15 +43,18 @@ func (j *Judge) solve(c *network.Calibration) (*network.Solved, error) {
 	}
 	j.mu.Lock()
 	defer j.mu.Unlock()
-	if j.solved[c] == nil {
-		if len(j.order) == keptCalibrations {
-			delete(j.solved, j.order[0])
-			j.order = j.order[1:]
-		}
-		j.solved[c] = s
-		j.order = append(j.order, c)
+	if j.solved[key] == nil {
+		j.solved[key] = s
+		runtime.AddCleanup(c, j.forget, key)
 	}
 	return s, nil
+}
+
+// forget drops the solution of a calibration that is gone.
+func (j *Judge) forget(key weak.Pointer[network.Calibration]) {
+	j.mu.Lock()
+	defer j.mu.Unlock()
+	delete(j.solved, key)
 }
 
 // Judge judges one case. An error is bad input (a Fault of kind Malformed) or the context's; a measurement that cannot be judged is a
@@ -71,80 +63,51 @@ func (j *Judge) Judge(ctx context.Context, c *Case) (verdict.Judgement, error) {
 	if err := CheckScope(c.PartType); err != nil {
 		return verdict.Judgement{}, err
 	}
-	main, err := mainSweep(c)
-	if err != nil {
+	if err := checkSweeps(c); err != nil {
 		return verdict.Judgement{}, err
 	}
-	g, err := j.open(c, main)
+	g, err := j.open(c)
 	if err != nil {
-		return verdict.Judgement{}, err
-	}
-	if err := ctx.Err(); err != nil {
 		return verdict.Judgement{}, err
 	}
 	b := j.benches.Get().(*bench)
+	b.used = 0
 	defer j.benches.Put(b)
-	if err := b.fit(c, main, g); err != nil {
+	w := workup{c: c, p: c.PartType, g: g, main: -1, fits: make([]*fitted, len(c.Sweeps))}
+	if err := w.fit(ctx, b); err != nil {
 		return verdict.Judgement{}, err
 	}
-	est := &b.estimate
-	ev := evidence(c.PartType, est, g)
-	out := verdict.Weigh(c.PartType.Decision, ev)
-	describe(&out, c.PartType, est)
-	if n := len(c.Sweeps) - 1; n > 0 {
-		out.Remarks = append(out.Remarks, fmt.Sprintf("%d further sweeps were kept; this part type has no limits that need them.", n))
-	}
-	return out, nil
+	return w.judge()
 }
 
-// mainSweep returns the one sweep that a case must have.
-func mainSweep(c *Case) (*sweep.Sweep, error) {
-	var main *sweep.Sweep
-	count := 0
+// checkSweeps holds the sweeps of a case together against the part type: exactly one is the main one, drive steps exist, no sweep can overdrive
+// the unit. A series that ended after a low level out of limit may have no main sweep; whether it did is known once it is fitted.
+func checkSweeps(c *Case) error {
+	main, drive := 0, 0
 	for i := range c.Sweeps {
-		if c.Sweeps[i].Role == sweep.Main {
-			main = &c.Sweeps[i]
-			count++
+		s := &c.Sweeps[i]
+		field := fmt.Sprintf("sweeps[%d]", i)
+		switch s.Role {
+		case sweep.Main:
+			main++
+		case sweep.Drive:
+			drive++
+			if d := c.PartType.Drive; d != nil && s.DriveStep >= len(d.LevelsWatt) {
+				return Faultf(Malformed, field+".drive_step", "want 0 to %d, the levels of %s, got %d", len(d.LevelsWatt)-1, c.PartType.Name, s.DriveStep)
+			}
+		}
+		if err := checkCeiling(c.PartType, c.Calibration, s, field); err != nil {
+			return err
 		}
 	}
-	if count != 1 {
-		return nil, Faultf(Malformed, "sweeps", "want one sweep of role main, got %d", count)
+	if main != 1 && !(main == 0 && drive > 0 && c.PartType.Drive != nil) {
+		return mainMissing(main)
 	}
-	return main, nil
+	return nil
 }
 
-// fit fits the main sweep with what the gate lets through.
-func (b *bench) fit(c *Case, main *sweep.Sweep, g *gate) error {
-	req := resonance.Request{Sweep: main, Expected: expected(c.PartType), ScaleUnknown: !g.scale}
-	if cal := c.Calibration; cal != nil {
-		req.NoiseRMS = network.SampleNoise(cal, main)
-		req.ClockOffset = cal.ReferenceClockOffsetPPM * 1e-6
-		req.ClockUncertainty = cal.ReferenceClockUncertaintyPPM * 1e-6
-	}
-	if g.solved != nil {
-		err := g.solved.Terms(&b.terms, main.FrequencyHz, main.Quantity)
-		var mismatch *network.MismatchError
-		switch {
-		case errors.As(err, &mismatch):
-			// The sweep leaves the calibrated band: no terms, no reading.
-			g.add(verdict.CalibrationMismatch, "%s.", mismatch.Text)
-			b.estimate = resonance.Estimate{State: resonance.CalibrationMismatch, Detail: mismatch.Text}
-			return nil
-		case err != nil:
-			return Faultf(Malformed, "quantity", "%w", err)
-		}
-		req.Terms = &b.terms
-		if b.contributions, err = g.solved.Contributions(b.contributions[:0], main.FrequencyHz, main.Quantity); err != nil {
-			return Faultf(Malformed, "calibration", "%w", err)
-		}
-		req.Contributions = b.contributions
-	} else if g.scale {
-		b.estimate = resonance.Estimate{State: resonance.CalibrationMismatch}
-		return nil
-	}
-	b.fitter.Fit(&req, &b.estimate)
-	addContact(&b.estimate, contactOf(c))
-	return nil
+func mainMissing(count int) error {
+	return Faultf(Malformed, "sweeps", "want one sweep of role main, got %d", count)
 }
 
 // expected are start values from the part type: where the unit should be, and what its limits allow.

@@ -24,6 +24,15 @@ type Recorded struct {
 	Already bool
 }
 
+// History finds what was recorded before. Records come without samples, newest first, and are not changed by either side.
+type History interface {
+	// OfUnit returns at most limit inspections of one unit held against one part type, of whatever version, for one purpose: what attempts are
+	// counted by. Unit is known by its serial, or by lot, carrier and pocket without one.
+	OfUnit(ctx context.Context, purpose Purpose, unit UnitID, partType string, limit int) ([]*Record, error)
+	// List is that of Archive.
+	List(ctx context.Context, f Filter, before uint64, limit int) ([]*Record, error)
+}
+
 // Catalogue knows part types and calibrations. What it returns is immutable and shared. A name that does not exist is a Fault of kind
 // Unknown.
 type Catalogue interface {

@@ -46,60 +46,59 @@ func sentence(detail string) string {
 	return string(unicode.ToUpper(first)) + strings.TrimRight(detail[size:], ".") + "."
 }
 
-// evidence puts a reading beside every limit of the limits section.
-func evidence(p *parttype.PartType, est *resonance.Estimate, g *gate) verdict.Evidence {
-	ev := verdict.Evidence{Limits: p.Limits, Causes: g.causes}
-	var all, frequencies []verdict.Cause // what suspends every limit, and what suspends those on frequency besides
-	for _, c := range g.causes {
-		f, others := suspends(c.Cause)
-		if others {
-			all = append(all, c.Cause)
-		} else if f {
-			frequencies = append(frequencies, c.Cause)
-		}
+// mainLimits puts a reading beside every limit of the limits section. They hold at the drive level of the part type.
+func (w *workup) mainLimits() {
+	for _, limit := range w.p.Limits {
+		w.limit(limit, w.mainReading(limit))
 	}
-	if c, bad := causeOf(est); bad {
-		if !named(ev.Causes, c.Cause) {
-			ev.Causes = append(ev.Causes, c)
-		}
-		all = append(all, c.Cause)
+}
+
+// mainReading returns the reading for a limit of the main mode, with what suspends it.
+func (w *workup) mainReading(limit parttype.Limit) verdict.Reading {
+	r := verdict.Reading{Quantity: limit.Quantity, Where: verdict.Nowhere, Unit: unitOf(limit.Quantity)}
+	absolute := limit.Quantity == parttype.FrequencyDeviation
+	if limit.Quantity == parttype.ShuntCapacitance && w.shunt != nil {
+		r.SuspendedBy = w.suspendedBy(false)
+		r.Note = shuntNote
+		value(&r, *w.shuntQuantity, true)
+		return r
 	}
-	for _, limit := range p.Limits {
-		r := verdict.Reading{Quantity: limit.Quantity, Where: verdict.Nowhere, Unit: unitOf(limit.Quantity), SuspendedBy: all}
-		if limit.Quantity == parttype.FrequencyDeviation {
-			r.SuspendedBy = append(append([]verdict.Cause(nil), all...), frequencies...)
+	if w.nominal == nil {
+		r.SuspendedBy, r.Note = w.suspendedBy(absolute), "the unit was not measured at its drive level"
+		switch {
+		case w.series.high:
+			r.SuspendedBy = append(r.SuspendedBy, verdict.HighResistanceAtLowDrive)
+		default:
+			w.cause(verdict.NewCause(verdict.DriveLevelMissed, fmt.Sprintf("No sweep was taken at the drive level of %s.", verdict.FormatBound(w.p.DriveLevelWatt, verdict.UnitWatt))))
+			r.SuspendedBy = append(r.SuspendedBy, verdict.DriveLevelMissed)
 		}
-		if !g.scale && needsOhms(limit) {
-			c := verdict.NewCause(verdict.CalibrationMissing, "The fixture network is not known: resistances, inductance and capacitances cannot be told.")
-			if !named(ev.Causes, c.Cause) {
-				ev.Causes = append(ev.Causes, c)
-			}
-			r.SuspendedBy = append(append([]verdict.Cause(nil), r.SuspendedBy...), c.Cause)
-		} else if known(est) {
-			r.Measured, r.Note, r.HasValue = read(limit, p, est)
-			if !r.HasValue && len(r.SuspendedBy) == 0 {
-				// A unit that has no such quantity at all: not a part out of limit, a limit that does not fit the unit.
-				r.SuspendedBy = []verdict.Cause{verdict.ModelMisfit}
-				ev.Causes = append(ev.Causes, verdict.NewCause(verdict.ModelMisfit, fmt.Sprintf("%s cannot be told: %s.", verdict.Label(limit.Quantity, verdict.Nowhere), r.Note)))
-			}
-		}
-		ev.Readings = append(ev.Readings, r)
+		return r
 	}
-	return ev
+	est := w.nominal.est
+	r.SuspendedBy = w.suspendedBy(absolute, w.nominal)
+	if !w.g.scale && needsOhms(limit) {
+		c := verdict.NewCause(verdict.CalibrationMissing, "The fixture network is not known: resistances, inductance and capacitances cannot be told.")
+		w.cause(c)
+		r.SuspendedBy = append(r.SuspendedBy, c.Cause)
+		return r
+	}
+	if !known(est) {
+		return r
+	}
+	q, note, ok := w.read(limit, est)
+	if ok {
+		value(&r, q, true)
+	} else if r.Note = note; len(r.SuspendedBy) == 0 {
+		// A unit that has no such quantity at all: not a part out of limit, a limit that does not fit the unit.
+		r.SuspendedBy = []verdict.Cause{verdict.ModelMisfit}
+		w.ev.Causes = append(w.ev.Causes, verdict.NewCause(verdict.ModelMisfit, fmt.Sprintf("%s cannot be told: %s.", verdict.Label(limit.Quantity, verdict.Nowhere), r.Note)))
+	}
+	return r
 }
 
 // known reports whether an estimate holds a unit, trusted or not.
 func known(est *resonance.Estimate) bool {
 	return est.Value[resonance.ResonanceHz] > 0 && (est.State == resonance.Found || est.State == resonance.OutsideSweep || est.State == resonance.Misfit)
-}
-
-func named(causes []verdict.RetestCause, c verdict.Cause) bool {
-	for _, k := range causes {
-		if k.Cause == c {
-			return true
-		}
-	}
-	return false
 }
 
 // needsOhms reports whether a limit needs the scale of impedances; frequencies of the motional arm and Q do not.
@@ -116,10 +115,12 @@ func needsOhms(l parttype.Limit) bool {
 // unitOf returns the unit of a quantity's limit.
 func unitOf(q parttype.Quantity) string {
 	switch q {
-	case parttype.FrequencyDeviation, parttype.PullingRange:
+	case parttype.FrequencyDeviation, parttype.PullingRange, parttype.DriveFrequencyShift, parttype.DriveReturnShift:
 		return verdict.UnitPPM
-	case parttype.MotionalResistance, parttype.ResonanceResistance, parttype.LoadResonanceResistance:
+	case parttype.MotionalResistance, parttype.ResonanceResistance, parttype.LoadResonanceResistance, parttype.DriveMotionalResistance:
 		return verdict.UnitOhm
+	case parttype.OvertoneSuppression, parttype.UnwantedModeSuppression:
+		return verdict.UnitDecibel
 	case parttype.MotionalCapacitance, parttype.ShuntCapacitance:
 		return verdict.UnitFarad
 	case parttype.PullingSensitivity:
@@ -128,17 +129,20 @@ func unitOf(q parttype.Quantity) string {
 	return verdict.UnitNone
 }
 
-// read returns the reading for one limit, or a note why the unit has none.
-func read(l parttype.Limit, p *parttype.PartType, est *resonance.Estimate) (v verdict.Value, note string, ok bool) {
-	f := quantityOf(l, p)
+// read returns the reading for one limit, or a note why the unit has none. Frequencies are referred to the temperature at which the limits hold.
+func (w *workup) read(l parttype.Limit, est *resonance.Estimate) (q quantity, note string, ok bool) {
+	f := quantityOf(l, w.p)
 	if f == nil {
-		return v, "this quantity is not one of the main sweep", false
+		return q, "this quantity is not one of the main sweep", false
 	}
-	if v, ok = measure(est, f); ok {
-		return v, "", true
+	if q, ok = quantityOfOne(est, f); ok {
+		if l.Quantity == parttype.FrequencyDeviation {
+			w.refer(&q)
+		}
+		return q, "", true
 	}
 	unit := est.Unit()
-	return v, fmt.Sprintf("the unit has no such frequency (figure of merit M = %.2f; zero phase needs more than 2)", unit.FigureOfMerit()), false
+	return q, fmt.Sprintf("the unit has no such frequency (figure of merit M = %.2f; zero phase needs more than 2)", unit.FigureOfMerit()), false
 }
 
 // quantityOf returns a limit's quantity as an exact function of the unit, in the unit of its limit; false where the unit has none.
@@ -175,7 +179,7 @@ func quantityOf(l parttype.Limit, p *parttype.PartType) func(crystal.Unit) (floa
 	case parttype.MotionalCapacitance:
 		return func(u crystal.Unit) (float64, bool) { return u.Modes[0].CapacitanceFarad(), true }
 	case parttype.ShuntCapacitance:
-		return func(u crystal.Unit) (float64, bool) { return u.ShuntCapacitanceFarad, true }
+		return shuntCapacitance
 	case parttype.QualityFactor:
 		return func(u crystal.Unit) (float64, bool) { return u.Modes[0].QualityFactor(), true }
 	case parttype.PullingSensitivity:
@@ -196,6 +200,8 @@ func quantityOf(l parttype.Limit, p *parttype.PartType) func(crystal.Unit) (floa
 	}
 	return nil
 }
+
+func shuntCapacitance(u crystal.Unit) (float64, bool) { return u.ShuntCapacitanceFarad, true }
 
 // connectionOf returns how a load is connected; a part type of series resonance that limits its pulling means a load in series.
 func connectionOf(p *parttype.PartType) crystal.LoadConnection {

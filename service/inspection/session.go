@@ -17,12 +17,13 @@ type Judger interface {
 
 // Desk receives inspections: it resolves what they name, judges them and has them recorded. It is safe for concurrent use.
 type Desk struct {
-	Judge     Judger
-	Recorder  Recorder
-	Catalogue Catalogue
-	Clock     Clock
-	Observer  Observer
-	Software  string // revision, kept with every record
+	Judge        Judger
+	Recorder     Recorder
+	Recollection *Recollection // nil: every inspection is judged as if it were the first
+	Catalogue    Catalogue
+	Clock        Clock
+	Observer     Observer
+	Software     string // revision, kept with every record
 }
 
 // Session is one inspection on its way in. It is used by one goroutine.
@@ -56,7 +57,18 @@ func (d *Desk) Open(ctx context.Context, b Begin, caller string) (*Session, erro
 			return nil, err
 		}
 	}
+	if b.Offline == nil { // what a station judged by itself has been measured, and waits for nobody
+		if err := CheckReach(s.c.PartType, s.c.Calibration); err != nil {
+			return nil, err
+		}
+	}
 	return s, nil
+}
+
+// Announce checks the header of a sweep before its samples arrive: a source power that could drive a unit beyond the part type's maximum is a
+// Fault of kind Malformed. Add checks it again; to call Announce is to know earlier.
+func (s *Session) Announce(w *sweep.Sweep) error {
+	return checkCeiling(s.c.PartType, s.c.Calibration, w, fmt.Sprintf("sweeps[%d]", len(s.c.Sweeps)))
 }
 
 // Add takes one whole sweep. The session keeps it.
@@ -73,6 +85,9 @@ func (s *Session) Add(w sweep.Sweep) error {
 	}
 	if faults := w.Check(); len(faults) > 0 {
 		return Faultf(Malformed, fmt.Sprintf("sweeps[%d]", len(s.c.Sweeps)), "%w", faults[0])
+	}
+	if err := s.Announce(&w); err != nil {
+		return err
 	}
 	s.c.Sweeps = append(s.c.Sweeps, w)
 	s.last = s.desk.Clock.Now()
@@ -106,6 +121,9 @@ func (s *Session) End(ctx context.Context, sent [32]byte) (r *Record, already bo
 		return first, true, nil
 	}
 	start := s.desk.Clock.Now()
+	if s.c.Background, err = s.desk.Recollection.background(ctx, &s.c); err != nil {
+		return nil, false, err
+	}
 	j, err := s.desk.Judge.Judge(ctx, &s.c)
 	if err != nil {
 		return nil, false, err
@@ -123,6 +141,7 @@ func (s *Session) Record(ctx context.Context, r *Record) (Recorded, error) {
 		return Recorded{}, err
 	}
 	if !kept.Already {
+		s.desk.Recollection.add(kept.Record)
 		s.desk.Observer.Recorded(kept.Record, max(0, s.desk.Clock.Now().Sub(s.last)))
 	}
 	return kept, nil
@@ -131,9 +150,10 @@ func (s *Session) Record(ctx context.Context, r *Record) (Recorded, error) {
 // NewRecord returns the record of a judged case; hashes, software and caller are the caller's to fill in.
 func NewRecord(c *Case, j verdict.Judgement) *Record {
 	r := &Record{
-		Begin:     c.Begin,
-		PartType:  Applied{PartTypeRef{c.PartType.Name, c.PartType.Version}, c.PartType.Hash()},
-		Judgement: j,
+		Begin:      c.Begin,
+		PartType:   Applied{PartTypeRef{c.PartType.Name, c.PartType.Version}, c.PartType.Hash()},
+		Background: c.Background,
+		Judgement:  j,
 	}
 	for i := range c.Sweeps {
 		r.Sweeps = append(r.Sweeps, HeaderOf(&c.Sweeps[i]))

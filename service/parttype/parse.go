@@ -17,6 +17,8 @@ const (
 	DefaultAfterLastAttempt = SetAside
 	DefaultTolerancePercent = 15  // of a drive level
 	DefaultWaitSeconds      = 0.3 // after a level above nominal; the frequency of an AT unit settles with some 0.2 s
+
+	DefaultCurveUncertaintyPercent = 10 // of what a temperature curve says
 )
 
 // Limits of a limits file; each is named in the fault of a file that is over it.
@@ -164,9 +166,15 @@ func (r *reader) temperature(v document.Value) {
 	if allowed, ok := f.Get("allowed_c").Fields("min", "max"); ok {
 		t.AllowedC = readBounds(allowed, celsius)
 	}
-	if curve, ok := f.Get("curve").Fields("first", "second", "third"); ok {
+	t.CurveUncertaintyPercent = DefaultCurveUncertaintyPercent
+	if curve, ok := f.Get("curve").Fields("first", "second", "third", "standard_uncertainty_percent"); ok {
 		for i, key := range []string{"first", "second", "third"} {
 			t.Curve[i], _ = curve.Get(key).Number("a number of ppm/K^n")
+		}
+		if percent, ok := curve.Get("standard_uncertainty_percent").Number("a number of percent"); ok {
+			if t.CurveUncertaintyPercent = percent; !(percent >= 0 && percent <= 100) {
+				curve.Get("standard_uncertainty_percent").Fault("0 to 100 percent")
+			}
 		}
 	}
 	r.p.Temperature = t

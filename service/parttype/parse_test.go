@@ -21,7 +21,7 @@ func everything() *PartType {
 		Name: "TM-25M000-F10", Version: 3, VibrationMode: ThicknessShear, Overtone: 1, NominalFrequencyHz: 25e6, CalibrationRequired: true,
 		Condition:      CircuitCondition{LoadCapacitanceFarad: 10e-12, Connection: crystal.SeriesLoad},
 		DriveLevelWatt: 10e-6, MaximumDriveWatt: 200e-6,
-		Temperature: &Temperature{ReferenceC: 25, AllowedC: Bounds{at(23), at(27)}, Curve: [3]float64{-0.1, 0.002, 1.1e-4}},
+		Temperature: &Temperature{ReferenceC: 25, AllowedC: Bounds{at(23), at(27)}, Curve: [3]float64{-0.1, 0.002, 1.1e-4}, CurveUncertaintyPercent: 20},
 		Limits: []Limit{
 			{Quantity: FrequencyDeviation, Of: LoadResonance, Bounds: Bounds{at(-10), at(10)}, Decide: Decide{GuardedBoth, 0.99}},
 			{Quantity: MotionalResistance, Bounds: Bounds{Max: at(40)}},

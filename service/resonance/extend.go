@@ -23,6 +23,7 @@ type extra struct {
 	value, deviation float64 // where it would go, and its standard deviation at the present noise
 	part             float64 // length of its derivative that the other parameters cannot imitate, over the whole length
 	gain             float64 // of twice the log-likelihood
+	explained        float64 // sum of squares that it would take away
 }
 
 // optional lists the parameters that extend may add, in the order in which they are looked at.
@@ -111,27 +112,25 @@ func (f *Fitter) extras() (found [len(optional)]extra) {
 	full.Evaluate(params[:full.parameters()], residual, jacobian)
 	for i, p := range optional {
 		if full.has(p) && !f.forward.has(p) {
-			found[i] = f.beside(&full, p, residual, jacobian)
+			found[i] = f.beside(full.columnOf(jacobian, p), residual)
 		}
 	}
 	return found
 }
 
-// beside examines one column of a Jacobian beside those of the model.
-func (f *Fitter) beside(full *forward, p Parameter, residual, jacobian []float64) (e extra) {
+// beside examines a column, the derivative of the residuals by something that is not in the model, beside the columns that are.
+func (f *Fitter) beside(column, residual []float64) (e extra) {
 	rows := len(residual)
-	column := full.columnOf(jacobian, p)
 	var response [mostParameters]float64
-	n := f.forward.parameters()
+	n := f.problem.parameters()
 	f.workspace.Response(response[:n], column)
+	jacobian := f.workspace.Jacobian()
 	f.shift = grown(f.shift, rows)
 	copy(f.shift, column)
-	for q := ResonanceHz; q <= logStretch; q++ {
-		if k := f.forward.column(q); k >= 0 {
-			by := response[k]
-			for i, d := range full.columnOf(jacobian, q) {
-				f.shift[i] += by * d
-			}
+	for k := range n {
+		by := response[k]
+		for i, d := range jacobian[k*rows : (k+1)*rows] {
+			f.shift[i] += by * d
 		}
 	}
 	limit := f.seen.limit
@@ -149,10 +148,10 @@ func (f *Fitter) beside(full *forward, p Parameter, residual, jacobian []float64
 		return e
 	}
 	sum := f.seen.sumOfSquares
-	remaining := math.Max(sum-product*product/left, 1e-12*sum)
+	e.explained = product * product / left
+	remaining := math.Max(sum-e.explained, 1e-12*sum)
 	freedom := math.Max(float64(2*f.seen.points-n-1), 1)
-	return extra{
-		value: -product / left, deviation: math.Sqrt(remaining / freedom / left),
-		part: math.Sqrt(left / whole), gain: f.seen.gain(sum, remaining),
-	}
+	e.value, e.deviation = -product/left, math.Sqrt(remaining/freedom/left)
+	e.part, e.gain = math.Sqrt(left/whole), f.seen.gain(sum, remaining)
+	return e
 }

@@ -17,25 +17,30 @@ const settledTimeConstants = 7.0
 const memoryTimeConstants = 12.0
 
 // remembers says whether the resonator's memory can be modelled at all. A source that restarts its phase leaves it undefined, and samples
-// stated as admittances or impedances do not tell what the resonator was loaded with while it rang.
+// stated as admittances or impedances do not tell what the resonator was loaded with while it rang. Magnitudes are fitted settled.
 func (f *Fitter) remembers() bool {
-	if f.request.Sweep.Timing.Phase == sweep.PhaseRestarted {
+	if f.parts() == 1 || f.request.Sweep.Timing.Phase == sweep.PhaseRestarted {
 		return false
 	}
 	return f.request.ScaleUnknown || !f.points.impedance && f.points.sourceAt(0) != 0
 }
 
+// ringsAs says that a sweep of which dwell and continuous phase are stated was too short in dwell for a resonance of that width to settle.
+func (f *Fitter) ringsAs(s *solution) bool {
+	t := f.request.Sweep.Timing
+	return !f.memory() && t.Dwell > 0 && t.Phase == sweep.PhaseContinuous && f.remembers() &&
+		t.Dwell.Seconds() < memoryTimeConstants*s.loaded.timeConstant()
+}
+
 // rememberStated fits again with the memory of the resonator in the model if the dwell is stated and short, and the source's phase
 // stated to be continuous.
 func (f *Fitter) rememberStated() {
-	t := timingOf(f.request.Sweep.Timing)
-	stated := t.dwell > 0 && f.request.Sweep.Timing.Phase == sweep.PhaseContinuous
-	if !stated || !f.remembers() || t.dwell >= memoryTimeConstants*f.best.loaded.timeConstant() {
+	if !f.ringsAs(&f.best) {
 		return
 	}
 	plain := f.save()
 	f.tried.n = 0
-	if f.startRinging(&plain, t, false) || f.choose() && f.seen.rms < plain.seen.rms {
+	if f.startRinging(&plain, timingOf(f.request.Sweep.Timing), false) || f.choose() && f.seen.rms < plain.seen.rms {
 		if f.request.ScaleUnknown {
 			f.stretch()
 		}
@@ -67,7 +72,7 @@ func (f *Fitter) rememberUnstated() {
 		mostLeft        = 0.1   // of the power of what was systematic
 	)
 	before := f.seen.systematic()
-	if !f.remembers() || f.memory() || before < leastSystematic*f.best.loaded.response {
+	if !f.remembers() || f.memory() || before < leastSystematic*f.best.loaded.response || !f.lags(before) {
 		return
 	}
 	plain := f.save()
@@ -77,7 +82,11 @@ func (f *Fitter) rememberUnstated() {
 		convinced = f.startRinging(&plain, stated, false)
 	} else {
 		tau := plain.best.loaded.timeConstant()
-		for _, ratio := range [...]float64{0.5, 0.1, 2, 0.02} {
+		ratios := []float64{0.5, 0.1, 2, 0.02}
+		if before < smallLag*plain.best.loaded.response {
+			ratios = []float64{2}
+		}
+		for _, ratio := range ratios {
 			if convinced = f.startRinging(&plain, timing{dwell: ratio * tau, averaging: ratio * tau}, true); convinced {
 				break
 			}
@@ -95,6 +104,38 @@ func (f *Fitter) rememberUnstated() {
 		}
 	}
 	f.restore(&plain)
+}
+
+// smallLag is the systematic residual, as a share of the response, up to which lag is small: of a dwell of half a time constant or more.
+const smallLag = 0.015
+
+// lags says whether what a settled model leaves looks like lag. A response y = 1/(1 + jt) that is passed at a slow rate becomes y + j s y^3 to
+// first order, s of the sign of the direction (the envelope equation expanded in the rate), so one number tells. A residual too large for
+// small lag is given the benefit of the doubt.
+func (f *Fitter) lags(systematic float64) bool {
+	const leastPart = 0.25 // of the power of what is systematic
+	l := &f.best.loaded
+	if systematic > smallLag*l.response {
+		return true
+	}
+	rows := 2 * f.points.n
+	f.wide = grown(f.wide, rows)
+	column := f.wide[:rows]
+	// The amplitude of the response in the plane of the residuals: what a sample near its centre has of it.
+	i := f.points.nearest(l.centreHz)
+	amplitude := f.responseAt(i) * complex(1, (f.points.offsetHz[i]-l.centreHz)/l.halfHz)
+	for k, d := range f.points.offsetHz {
+		y := reciprocal(complex(1, (d-l.centreHz)/l.halfHz))
+		v := amplitude * y * y * y * complex(0, 1)
+		column[2*k], column[2*k+1] = real(v), imag(v)
+	}
+	return f.beside(column, f.pairs).explained > leastPart*systematic*systematic*float64(f.seen.points)
+}
+
+// responseAt returns what the sample at a point has of the resonance, in units of the raw sample and the direction of the residuals.
+func (f *Fitter) responseAt(i int) complex128 {
+	p := &f.points
+	return complex(p.scale[i], 0) * (complex(p.re[i], p.im[i]) - f.background(i))
 }
 
 // saved is a fit that may be returned to.
@@ -136,7 +177,11 @@ func (f *Fitter) startRinging(plain *saved, t timing, free bool) bool {
 	if o := f.points.offsetHz; o[len(o)-1] < o[0] {
 		later = -1
 	}
-	for _, from := range [...]struct{ back, width float64 }{{0, 1}, {0.3, 1}, {1, 1}, {0.5, 0.5}, {1, 0.2}, {1.5, 0.2}, {1, 0.1}} {
+	starts := []struct{ back, width float64 }{{0, 1}, {0.3, 1}, {1, 1}, {0.5, 0.5}, {1, 0.2}, {1.5, 0.2}, {1, 0.1}}
+	if plain.seen.systematic() < smallLag*plain.best.loaded.response {
+		starts = starts[:2]
+	}
+	for _, from := range starts {
 		s := &f.tried.solution[f.tried.n]
 		*s = solution{}
 		move := -later * from.back * 2 * plain.best.loaded.halfHz

@@ -127,6 +127,10 @@ func (f *Fitter) start() bool {
 	if q, ok := f.plane.fit(); ok && f.attemptPole(q) {
 		return true
 	}
+	if f.tried.n > 0 && f.ringsAs(&f.tried.solution[0]) {
+		// Other starts would not help: what is missing is the memory.
+		return f.choose()
+	}
 	f.list.n = 0
 	f.plane.scan(&f.list, f.expectedHalfHz())
 	z := f.robustNull()
@@ -221,6 +225,9 @@ func (f *Fitter) settle(s *solution) bool {
 	if f.seen.wild == 0 && !f.seen.clustered {
 		return true
 	}
+	if f.ringsAs(s) {
+		return true // what is far off will be explained by memory
+	}
 	f.plain = *s
 	for range 5 {
 		before := f.seen.typical
@@ -279,12 +286,13 @@ func paired(dst, values []float64) []float64 {
 	return dst
 }
 
-// convincing says that no other start can lead to anything better: what is left is white, and the response stands well above it.
+// convincing says that no other start can lead to anything better: what is left is white but for wild points that stand alone, and the response
+// stands well above it.
 func (f *Fitter) convincing(s *solution) bool {
 	const clearlyAbove = 10 // 20 dB
 	l := &s.loaded
 	low, high := f.points.span()
-	return s.result.Status == leastsquares.Converged && f.seen.wild == 0 && !f.seen.clustered && !f.seen.significant() &&
+	return s.result.Status == leastsquares.Converged && !f.seen.clustered && !f.seen.significant() &&
 		l.response > clearlyAbove*f.seen.rms && l.centreHz > low-2*l.halfHz && l.centreHz < high+2*l.halfHz &&
 		f.supported(l)
 }

@@ -31,6 +31,10 @@ const (
 
 	leastCapacitanceFarad = -0.5e-12 // a shunt capacitance clearly below is none, whatever the open standard was off by
 
+	// A resonance counts as inside the sweep up to this many half widths beyond its edge: as long as the sweep reaches about the half-power
+	// point, R1 and L1 stand on more than a tail.
+	stillInside = 1.2
+
 	// Standard deviations beyond which parameters cannot be told: of ln R1 and ln L1, and of fs in loaded bandwidths.
 	mostDeviation = 0.5
 )
@@ -62,7 +66,7 @@ func (f *Fitter) judge(est *Estimate, found bool) {
 		est.State = CalibrationMismatch
 		est.Detail = fmt.Sprintf("the samples reach %.1f %% beyond what a passive unit can give: they do not belong to this calibration", 100*active)
 	case f.misfit(est, visible, active > tolerated):
-	case l.centreHz < low-l.halfHz || l.centreHz > high+l.halfHz:
+	case l.centreHz < low-stillInside*l.halfHz || l.centreHz > high+stillInside*l.halfHz:
 		f.outside(est, &z, low, high)
 	case f.implausible(est):
 	case !bounded || f.undetermined(est):

@@ -58,23 +58,25 @@ func (f *Fitter) supported(l *loaded) bool {
 // leastSupport is the least number of points that must carry a response. Two points for each loaded bandwidth give 4.
 const leastSupport = 2.5
 
+// background returns what the solution has at a point without the motional arm, in the plane of points.
+func (f *Fitter) background(i int) complex128 {
+	p := &f.points
+	params := f.best.params[:]
+	if f.request.ScaleUnknown {
+		x := (p.offsetHz[i] - f.shape.middle) / f.shape.half
+		return complex(params[shapeBackground]+x*params[shapeSlope], params[shapeBackground+1]+x*params[shapeSlope+1])
+	}
+	m := f.known()
+	shunt := complex(m.value(params, ShuntConductanceSiemens), p.angular[i]*params[ShuntCapacitanceFarad])
+	return shunt / (1 + complex(p.sourceRe[i], p.sourceIm[i])*shunt)
+}
+
 // largestResponse returns the largest distance of a sample from the background of the solution: what a sweep shows of a resonance that had no
 // time to reach its height.
 func (f *Fitter) largestResponse() float64 {
-	p := &f.points
-	params := f.best.params[:]
 	largest := 0.0
-	for i := range p.n {
-		var background complex128
-		if f.request.ScaleUnknown {
-			x := (p.offsetHz[i] - f.shape.middle) / f.shape.half
-			background = complex(params[shapeBackground]+x*params[shapeSlope], params[shapeBackground+1]+x*params[shapeSlope+1])
-		} else {
-			m := f.known()
-			shunt := complex(m.value(params, ShuntConductanceSiemens), p.angular[i]*params[ShuntCapacitanceFarad])
-			background = shunt / (1 + complex(p.sourceRe[i], p.sourceIm[i])*shunt)
-		}
-		largest = math.Max(largest, p.scale[i]*cmplx.Abs(complex(p.re[i], p.im[i])-background))
+	for i := range f.points.n {
+		largest = math.Max(largest, cmplx.Abs(f.responseAt(i)))
 	}
 	return largest
 }

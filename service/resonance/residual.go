@@ -129,6 +129,41 @@ func (r *residuals) accumulate(pairs []float64) {
 	}
 }
 
+// blocks returns the variance of the means of blocks of neighbouring points over what it is for white noise, 1 + 2 (rho1 + rho2 + ...) as far as a
+// block reaches, or 1 if that is within the scatter of white noise. It sees what lag 1 does not: a residual far below the noise
+// of a point that goes the same way over many.
+func (r *residuals) blocks(pairs []float64, length int) float64 {
+	const deviations = 3.5
+	n := len(pairs) / 2
+	count := n / max(length, 1)
+	if length < 2 || count < 4 || r.rms == 0 {
+		return 1
+	}
+	var sum float64
+	used := 0
+	for b := range count {
+		var re, im float64
+		kept := 0
+		for i := b * length; i < (b+1)*length; i++ {
+			x, y := pairs[2*i], pairs[2*i+1]
+			if x*x+y*y <= r.limit {
+				re += x
+				im += y
+				kept++
+			}
+		}
+		if kept > 0 {
+			sum += (re*re + im*im) / float64(kept)
+			used++
+		}
+	}
+	ratio := sum / float64(used) / (r.rms * r.rms)
+	if ratio < 1+deviations*math.Sqrt(2/float64(r.parts*used)) {
+		return 1
+	}
+	return ratio
+}
+
 // scatter is the lag-1 correlation that white noise stays below: four of its standard deviations, 1/sqrt(2 n) for n complex points.
 func (r *residuals) scatter() float64 { return 4 / math.Sqrt(float64(r.parts*max(r.points, 1))) }
 

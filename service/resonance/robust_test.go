@@ -14,6 +14,7 @@ func TestNoneLost(t *testing.T) {
 	if testing.Short() {
 		trials = 40
 	}
+	rice := newRiceTable()
 	for _, c := range []struct {
 		name                string
 		snr, wild           float64
@@ -21,15 +22,15 @@ func TestNoneLost(t *testing.T) {
 		halfSpan, most      float64 // in bandwidths; largest ratio of the rms error of fs to the bound
 		expected, magnitude bool
 	}{
-		{name: "5 dB", snr: 5, points: 401, halfSpan: 5, most: 1.25},
-		{name: "5 dB, unit expected", snr: 5, points: 401, halfSpan: 5, most: 1.25, expected: true},
-		{name: "1 % wild at 50 dB", snr: 50, wild: 0.01, points: 401, halfSpan: 5, most: 1.3},
-		{name: "1 % wild at 30 dB", snr: 30, wild: 0.01, points: 401, halfSpan: 5, most: 1.3},
-		{name: "13 points", snr: 40, points: 13, halfSpan: 4.2, most: 1.25},
-		{name: "9 points", snr: 40, points: 9, halfSpan: 2, most: 1.25},
-		{name: "2 points a bandwidth", snr: 40, points: 401, halfSpan: 100, most: 1.25},
-		{name: "magnitudes at 20 dB", snr: 20, points: 401, halfSpan: 5, most: 3, magnitude: true},
-		{name: "magnitudes, 1 % wild at 50 dB", snr: 50, wild: 0.01, points: 401, halfSpan: 5, most: 3, magnitude: true},
+		{name: "5 dB", snr: 5, points: 401, halfSpan: 5, most: 1.05},
+		{name: "5 dB, unit expected", snr: 5, points: 401, halfSpan: 5, most: 1.05, expected: true},
+		{name: "1 % wild at 50 dB", snr: 50, wild: 0.01, points: 401, halfSpan: 5, most: 1.15},
+		{name: "1 % wild at 30 dB", snr: 30, wild: 0.01, points: 401, halfSpan: 5, most: 1.15},
+		{name: "13 points", snr: 40, points: 13, halfSpan: 4.2, most: 1.05},
+		{name: "9 points", snr: 40, points: 9, halfSpan: 2, most: 1.05},
+		{name: "2 points a bandwidth", snr: 40, points: 401, halfSpan: 100, most: 1.05},
+		{name: "magnitudes at 20 dB", snr: 20, points: 401, halfSpan: 5, most: 1.1, magnitude: true},
+		{name: "magnitudes, 1 % wild at 50 dB", snr: 50, wild: 0.01, points: 401, halfSpan: 5, most: 1.25, magnitude: true},
 	} {
 		for _, p := range parts() {
 			bw := p.unit.bandwidth(p.in)
@@ -38,6 +39,9 @@ func TestNoneLost(t *testing.T) {
 			peak := p.unit.peak(p.in)
 			rms := peak / decibels(c.snr)
 			limit := bound(p.unit, p.in, frequencies, rms, settledSample(frequencies))[0]
+			if c.magnitude {
+				limit = rice.bound(p.unit, p.in, frequencies, rms)[0]
+			}
 			var f Fitter
 			var est Estimate
 			var squares float64
@@ -63,7 +67,7 @@ func TestNoneLost(t *testing.T) {
 				}
 				squares += off * off
 			}
-			if ratio := math.Sqrt(squares/float64(trials)) / limit; ratio > c.most+4/math.Sqrt(2*float64(trials))-0.2 {
+			if ratio := math.Sqrt(squares/float64(trials)) / limit; ratio > c.most+5/math.Sqrt(2*float64(trials)) {
 				t.Errorf("%s, %s: rms error of fs %.2f times the bound", c.name, p.name, ratio)
 			}
 		}
@@ -85,35 +89,43 @@ func TestWildPointsAreCounted(t *testing.T) {
 	}
 }
 
-// TestSecondMode: an unwanted mode two bandwidths away is not described by one mode. Where it matters the answer is a misfit; where it is weak the
-// uncertainty covers what it does.
+// TestSecondMode: an unwanted mode two bandwidths away is not described by one mode. Where it matters the answer is a misfit; where it is weak,
+// even where the noise of a point hides it, the uncertainty covers what it does.
 func TestSecondMode(t *testing.T) {
 	rng := random(t, rand.Uint64())
-	p := parts()[1]
-	bw := p.unit.bandwidth(p.in)
-	frequencies := grid(p.unit.fs, 5*bw, 401)
-	for _, c := range []struct {
-		db   float64
-		want State
-	}{{3, Misfit}, {6, Misfit}, {10, Misfit}, {20, Found}, {30, Found}, {40, Found}} {
-		r2 := (p.unit.r1+25)*decibels(c.db) - 25
-		second := truth{fs: p.unit.fs + 2*bw, r1: r2, l1: p.unit.l1 * (r2 + 25) / (p.unit.r1 + 25)}
-		req := measured(p.unit, p.in, frequencies)
-		for i, f := range frequencies {
-			v := p.in.sample(p.unit.admittance(f) + second.admittance(f))
-			req.Sweep.Re[i], req.Sweep.Im[i] = real(v), imag(v)
-		}
-		for _, snr := range []float64{50, 70} {
-			var f Fitter
-			var est Estimate
-			f.Fit(noisy(req, p.unit.peak(p.in)/decibels(snr), rng), &est)
-			if est.State != c.want {
-				t.Errorf("%g dB down at %g dB: %s %s, want %s", c.db, snr, est.State, est.Detail, c.want)
+	trials := 100
+	if testing.Short() {
+		trials = 15
+	}
+	for _, p := range []part{parts()[1], parts()[2], parts()[4]} {
+		bw := p.unit.bandwidth(p.in)
+		frequencies := grid(p.unit.fs, 5*bw, 401)
+		z := real(p.in.c)
+		for _, db := range []float64{3, 6, 10, 20, 30, 40, 50, 60} {
+			r2 := (p.unit.r1+z)*decibels(db) - z
+			second := truth{fs: p.unit.fs + 2*bw, r1: r2, l1: p.unit.l1 * (r2 + z) / (p.unit.r1 + z)}
+			req := measured(p.unit, p.in, frequencies)
+			for i, f := range frequencies {
+				v := p.in.sample(p.unit.admittance(f) + second.admittance(f))
+				req.Sweep.Re[i], req.Sweep.Im[i] = real(v), imag(v)
 			}
-			e, sd := errorsOf(&est, p.unit)
-			for k := range 3 {
-				if math.Abs(e[k]) > 2.5*sd[k] {
-					t.Errorf("%g dB down at %g dB: quantity %d off by %.1f of its standard uncertainties", c.db, snr, k, e[k]/sd[k])
+			for _, snr := range []float64{50, 70} {
+				wrong := 0
+				for range trials {
+					var f Fitter
+					var est Estimate
+					f.Fit(noisy(req, p.unit.peak(p.in)/decibels(snr), rng), &est)
+					if db <= 10 && est.State != Misfit || db >= 30 && est.State != Found {
+						t.Errorf("%s, %g dB down at %g dB: %s %s", p.name, db, snr, est.State, est.Detail)
+					}
+					e, sd := errorsOf(&est, p.unit)
+					if est.State == Found && (math.Abs(e[0]) > 3*sd[0] || math.Abs(e[1]) > 3*sd[1]) {
+						wrong++
+					}
+				}
+				t.Logf("%s, %g dB down at %g dB: %d of %d", p.name, db, snr, wrong, trials)
+				if wrong*100 > 5*trials {
+					t.Errorf("%s, %g dB down at %g dB: %d of %d found and wrong by more than three standard uncertainties", p.name, db, snr, wrong, trials)
 				}
 			}
 		}

@@ -5,11 +5,11 @@ import (
 	"testing"
 	"time"
 
+	"example.com/admit/service/floor"
 	"example.com/admit/service/inspection"
-	"example.com/admit/service/verdict"
 )
 
-func names(states []StationState) string {
+func names(states []floor.State) string {
 	text := ""
 	for _, s := range states {
 		text += fmt.Sprintf("%s/%s ", s.Line, s.Name)
@@ -32,7 +32,7 @@ func TestBoardIsSeededFromTheArchive(t *testing.T) {
 		{"listed", []inspection.Station{{Name: "S1", Line: "South"}, {Name: "S2", Line: "South"}, {Name: "N2", Line: "North"}}, "North/N2 South/S1 South/S2 ",
 			map[inspection.StationID]uint64{"N2": 29, "S1": 30}},
 	} {
-		b, err := NewBoard(c.stations, wallClock{})
+		b, err := floor.New(c.stations, wallClock{})
 		if err != nil {
 			t.Fatal(err)
 		}
@@ -55,7 +55,7 @@ func TestBoardIsSeededFromTheArchive(t *testing.T) {
 }
 
 func TestBoardTellsWhatChanged(t *testing.T) {
-	b, err := NewBoard([]inspection.Station{{Name: "N1"}, {Name: "N2"}}, wallClock{})
+	b, err := floor.New([]inspection.Station{{Name: "N1"}, {Name: "N2"}}, wallClock{})
 	if err != nil {
 		t.Fatal(err)
 	}
@@ -88,7 +88,7 @@ func TestBoardTellsWhatChanged(t *testing.T) {
 	if len(b.Latest()) != 2 {
 		t.Errorf("a station that is not listed is shown: %s", names(b.Latest()))
 	}
-	closeOne, closeTwo := b.opened("N2"), b.opened("N2")
+	closeOne, closeTwo := b.Opened("N2"), b.Opened("N2")
 	closeOne()
 	if s := b.Latest()[1]; !s.Connected {
 		t.Error("not connected while one of two streams is open")
@@ -97,52 +97,30 @@ func TestBoardTellsWhatChanged(t *testing.T) {
 	if s := b.Latest()[1]; s.Connected {
 		t.Error("connected without a stream")
 	}
-	if _, err := NewBoard([]inspection.Station{{Name: "N1"}, {Name: "N1"}}, wallClock{}); err == nil {
+	if _, err := floor.New([]inspection.Station{{Name: "N1"}, {Name: "N1"}}, wallClock{}); err == nil {
 		t.Error("a station stands twice")
 	}
 }
 
 // Whatever names come along, the board stays small, and a connected station is never the one to go.
 func TestBoardStaysSmall(t *testing.T) {
-	b, err := NewBoard(nil, wallClock{})
+	b, err := floor.New(nil, wallClock{})
 	if err != nil {
 		t.Fatal(err)
 	}
-	b.opened("N1")
-	for i := range 3 * maxUnlisted {
+	b.Opened("N1")
+	for i := range 3 * floor.MaxUnlisted {
 		b.Recorded(&inspection.Record{Begin: inspection.Begin{Station: inspection.StationID(fmt.Sprint("X", i))}, Sequence: uint64(i + 1)}, time.Second)
 	}
 	states := b.Latest()
-	if len(states) != maxUnlisted {
-		t.Errorf("%d stations, want %d", len(states), maxUnlisted)
+	if len(states) != floor.MaxUnlisted {
+		t.Errorf("%d stations, want %d", len(states), floor.MaxUnlisted)
 	}
 	found := map[inspection.StationID]bool{}
 	for _, s := range states {
 		found[s.Name] = true
 	}
-	if !found["N1"] || !found[inspection.StationID(fmt.Sprint("X", 3*maxUnlisted-1))] || found["X0"] {
+	if !found["N1"] || !found[inspection.StationID(fmt.Sprint("X", 3*floor.MaxUnlisted-1))] || found["X0"] {
 		t.Error("want the connected station and the newest, not the oldest")
-	}
-}
-
-func TestReasonsAndAdvice(t *testing.T) {
-	findings := []verdict.Finding{
-		{Text: "R1 conforms.", Outcome: verdict.Conforms}, {Text: "fL undecided.", Outcome: verdict.Undecided},
-		{Text: "R1 violates.", Outcome: verdict.Violates}, {Text: "C0 suspended.", Outcome: verdict.Suspended},
-	}
-	for _, c := range []struct {
-		j       verdict.Judgement
-		reasons string
-		advice  string
-	}{
-		{verdict.Judgement{Verdict: verdict.Pass, Findings: findings[:1]}, "[]", ""},
-		{verdict.Judgement{Verdict: verdict.Fail, Findings: findings}, "[R1 violates.]", adviceAfterFail},
-		{verdict.Judgement{Verdict: verdict.Retest, Findings: findings[:2], RetestCauses: []verdict.RetestCause{{Text: "Too noisy.", Advice: "Clean."}, {Text: "Unlocked.", Advice: "Lock."}}},
-			"[Too noisy. Unlocked. fL undecided.]", "Clean."},
-	} {
-		reasons, advice := Reasons(&c.j)
-		if fmt.Sprint(reasons) != c.reasons || advice != c.advice {
-			t.Errorf("%s: %v, %q; want %s, %q", c.j.Verdict, reasons, advice, c.reasons, c.advice)
-		}
 	}
 }

@@ -147,7 +147,7 @@ func (h stationService) PublishCalibration(stream grpc.ClientStreamingServer[pb.
 func (s *Server) publishCalibration(ctx context.Context, c *network.Calibration) (*pb.PublishCalibrationResponse, error) {
 	caller := callerFrom(ctx)
 	// An engineer may publish for every contact head, a fixture for those of its stations.
-	if !caller.May(Engineer) && !s.board.belongs(caller, inspection.ContactHead(c.ContactHead)) {
+	if !caller.May(Engineer) && !s.board.Belongs(inspection.ContactHead(c.ContactHead), caller.SpeaksFor) {
 		err := inspection.Faultf(inspection.Forbidden, "calibration.contact_head", "%q may not publish for contact head %q", caller.Name, c.ContactHead)
 		s.security(ctx, "calibration_refused", caller.Name, pb.StationService_PublishCalibration_FullMethodName, err)
 		return nil, err

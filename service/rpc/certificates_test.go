@@ -80,7 +80,7 @@ func TestCertificatesRotateUnderLoad(t *testing.T) {
 	}
 }
 
-func (f *floor) dirOf(files CertificateFiles) string {
+func (f *testFloor) dirOf(files CertificateFiles) string {
 	return strings.TrimSuffix(files.Certificate, "/server.pem")
 }
 

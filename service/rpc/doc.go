@@ -6,7 +6,7 @@
 //   - what a caller may do: one table of methods and permissions that denies what it does not list (permission.go);
 //   - how a fault is said: one table from inspection.Kind to gRPC codes and details (fault.go);
 //   - how much is taken at once: message size, streams, points in memory, time without progress (limits.go);
-//   - what the stations were last seen doing ([Board]);
+//   - what the stations were last seen doing ([floor.Board]);
 //   - how it ends: health first, streams told, a grace period, then by force ([Server.Serve]).
 //
 // A request by HTTP travels through the same gRPC server over a connection inside the process, so that there is one permission check and

@@ -127,8 +127,8 @@ func (b *logBook) since() func() string {
 	}
 }
 
-// floor is a server on a loopback address with an in-memory store.
-type floor struct {
+// testFloor is a server on a loopback address with an in-memory store.
+type testFloor struct {
 	t       *testing.T
 	server  *Server
 	store   *memory.Store
@@ -150,9 +150,9 @@ func limitsFile(t testing.TB, name string) []byte {
 }
 
 // newServer returns a server that is not served yet, with one part type published.
-func newServer(t *testing.T, change func(*Options)) *floor {
+func newServer(t *testing.T, change func(*Options)) *testFloor {
 	t.Helper()
-	f := &floor{t: t, store: memory.New(wallClock{}), heard: &listener{}, log: &logBook{}}
+	f := &testFloor{t: t, store: memory.New(wallClock{}), heard: &listener{}, log: &logBook{}}
 	p, err := parttype.Parse("part-type.yaml", limitsFile(t, partType))
 	if err != nil {
 		t.Fatal(err)
@@ -178,14 +178,14 @@ func newServer(t *testing.T, change func(*Options)) *floor {
 }
 
 // newFloor returns a server that answers on a plain loopback address.
-func newFloor(t *testing.T, change func(*Options)) *floor {
+func newFloor(t *testing.T, change func(*Options)) *testFloor {
 	t.Helper()
 	f := newServer(t, change)
 	f.serve(Listener{Listener: f.listen(), Plain: true})
 	return f
 }
 
-func (f *floor) listen() net.Listener {
+func (f *testFloor) listen() net.Listener {
 	f.t.Helper()
 	l, err := net.Listen("tcp", "127.0.0.1:0")
 	if err != nil {
@@ -194,7 +194,7 @@ func (f *floor) listen() net.Listener {
 	return l
 }
 
-func (f *floor) serve(l Listener) {
+func (f *testFloor) serve(l Listener) {
 	f.address = l.Addr().String()
 	ctx, cancel := context.WithCancel(context.Background())
 	result := make(chan error, 1)
@@ -207,7 +207,7 @@ func (f *floor) serve(l Listener) {
 	})
 }
 
-func (f *floor) dial(options ...grpc.DialOption) *grpc.ClientConn {
+func (f *testFloor) dial(options ...grpc.DialOption) *grpc.ClientConn {
 	f.t.Helper()
 	if len(options) == 0 {
 		options = []grpc.DialOption{grpc.WithTransportCredentials(insecure.NewCredentials())}

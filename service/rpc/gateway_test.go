@@ -20,7 +20,7 @@ import (
 )
 
 // newPage serves the JSON form of a floor on a loopback address.
-func newPage(t *testing.T, f *floor, config *tls.Config) *httptest.Server {
+func newPage(t *testing.T, f *testFloor, config *tls.Config) *httptest.Server {
 	t.Helper()
 	h, err := f.server.Handler()
 	if err != nil {
@@ -203,7 +203,7 @@ func TestHTTPPassesThePermissionCheck(t *testing.T) {
 		path       string
 		status     int
 	}{
-		{Operator, "/v1/stations", 200}, {Operator, "/v1/store", 403}, {Operator, "/v1/part-types", 403}, {Operator, "/v1/inspections", 403},
+		{Operator, "/v1/stations", 200}, {Operator, "/v1/store", 403}, {Operator, "/v1/part-types", 403}, {Operator, "/v1/inspections", 200}, {Operator, "/v1/inspections:count", 403},
 		{Supervisor, "/v1/inspections", 200}, {Supervisor, "/v1/store", 403}, {Engineer, "/v1/store", 200}, {Administrator, "/v1/store", 200},
 		{Fixture, "/v1/stations", 403}, {Metrics, "/v1/stations", 403},
 	} {
@@ -262,6 +262,14 @@ func TestHTTPByCertificate(t *testing.T) {
 		if status, body := get(t, as(c.name), http.MethodGet, page.URL+c.path, nil); status != c.status {
 			t.Errorf("%s as %s: status %d, want %d: %s", c.path, c.name, status, c.status, body)
 		}
+	}
+	old := &tls.Config{
+		RootCAs: ca.pool(), ServerName: "admit.floor.example", Certificates: []tls.Certificate{ca.pair(client("n1.floor.example"))},
+		MinVersion: tls.VersionTLS10, MaxVersion: tls.VersionTLS11,
+	}
+	if conn, err := tls.Dial("tcp", page.Listener.Addr().String(), old); err == nil {
+		t.Error("let in by TLS 1.1")
+		conn.Close()
 	}
 	if _, err := as("").Get(page.URL + "/v1/stations"); err == nil {
 		t.Error("let in without a certificate")

@@ -123,13 +123,13 @@ func (i *inspect) begin() error {
 	if err := begin.Check(); err != nil {
 		return within("begin", err)
 	}
-	if err := i.s.board.admits(begin.Station, begin.ContactHead); err != nil {
+	if err := i.s.board.Admits(begin.Station, begin.ContactHead); err != nil {
 		return within("begin", err)
 	}
 	if i.session, err = i.s.desk.Open(i.ctx, begin, caller.Name); err != nil {
 		return within("begin", err)
 	}
-	i.closed = i.s.board.opened(begin.Station)
+	i.closed = i.s.board.Opened(begin.Station)
 	return nil
 }
 

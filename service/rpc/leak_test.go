@@ -15,7 +15,7 @@ import (
 	pb "example.com/admit/api/admit/v1"
 )
 
-func callMetadataAs(t *testing.T, f *floor, name string) error {
+func callMetadataAs(t *testing.T, f *testFloor, name string) error {
 	t.Helper()
 	return callMetadata(metadata.AppendToOutgoingContext(t.Context(), callerKey, name), f.dial())
 }

@@ -1,7 +1,9 @@
 package rpc
 
 import (
+	"net"
 	"sync/atomic"
+	"testing"
 	"time"
 
 	"google.golang.org/protobuf/types/known/timestamppb"
@@ -38,3 +40,12 @@ func (c *steppedClock) add(d time.Duration) { c.by.Add(int64(d)) }
 
 // tooLate is behind the year 9999.
 var tooLate = timestamppb.Timestamp{Seconds: 1 << 60}
+
+func listenForBenchmark(b *testing.B) net.Listener {
+	b.Helper()
+	l, err := net.Listen("tcp", "127.0.0.1:0")
+	if err != nil {
+		b.Fatal(err)
+	}
+	return l
+}

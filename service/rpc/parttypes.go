@@ -30,6 +30,9 @@ func parseLimits(field string, file []byte) (*parttype.PartType, error) {
 	if errors.As(err, &list) {
 		return nil, &inspection.Fault{Kind: inspection.Malformed, Field: field, Err: list}
 	}
+	if err == nil {
+		err = inspection.CheckScope(p)
+	}
 	return p, err
 }
 

@@ -38,7 +38,7 @@ var needs = map[string][]Permission{
 	pb.StationService_WatchStations_FullMethodName:      {Operator, Supervisor, Engineer, Administrator},
 
 	pb.InspectionService_GetInspection_FullMethodName:    {Operator, Supervisor, Engineer},
-	pb.InspectionService_ListInspections_FullMethodName:  {Supervisor, Engineer},
+	pb.InspectionService_ListInspections_FullMethodName:  {Operator, Supervisor, Engineer},
 	pb.InspectionService_CountInspections_FullMethodName: {Supervisor, Engineer},
 	pb.InspectionService_WatchInspections_FullMethodName: {Operator, Supervisor, Engineer},
 	pb.InspectionService_ReadSweeps_FullMethodName:       {Engineer},

@@ -71,7 +71,7 @@ func TestEveryMethodHasARow(t *testing.T) {
 // wantPermissions is the table again, by hand and by permission: a change of the one must be meant in the other.
 var wantPermissions = map[Permission]string{
 	Fixture:       "Inspect PublishCalibration ReadCalibration Check List Watch",
-	Operator:      "ListStations WatchStations GetInspection WatchInspections Check List Watch",
+	Operator:      "ListStations WatchStations GetInspection ListInspections WatchInspections Check List Watch",
 	Supervisor:    "ListStations WatchStations GetInspection ListInspections CountInspections WatchInspections GetPartType ListPartTypes Check List Watch",
 	Engineer:      "PublishCalibration ReadCalibration ListStations WatchStations GetInspection ListInspections CountInspections WatchInspections ReadSweeps PublishPartType GetPartType ListPartTypes Judge GetStoreStatus Check List Watch ServerReflectionInfo",
 	Administrator: "ListStations WatchStations GetStoreStatus Check List Watch ServerReflectionInfo",

@@ -21,6 +21,7 @@ import (
 	"google.golang.org/grpc/reflection"
 
 	pb "example.com/admit/api/admit/v1"
+	"example.com/admit/service/floor"
 	"example.com/admit/service/inspection"
 )
 
@@ -47,7 +48,7 @@ type Server struct {
 	o     Options
 	desk  *inspection.Desk
 	log   *slog.Logger
-	board *Board
+	board *floor.Board
 	book  atomic.Pointer[book]
 
 	grpc   *grpc.Server
@@ -78,7 +79,7 @@ func New(o Options) (*Server, error) {
 	if err := o.Access.Check(); err != nil {
 		return nil, err
 	}
-	board, err := NewBoard(o.Stations, o.Desk.Clock)
+	board, err := floor.New(o.Stations, o.Desk.Clock)
 	if err != nil {
 		return nil, err
 	}
@@ -146,7 +147,7 @@ func (s *Server) serverOptions() []grpc.ServerOption {
 }
 
 // Board returns what the stations were last seen doing.
-func (s *Server) Board() *Board { return s.board }
+func (s *Server) Board() *floor.Board { return s.board }
 
 // Streams returns how many streams are open.
 func (s *Server) Streams() int { return int(s.streams.Load()) }

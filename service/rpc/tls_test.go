@@ -126,7 +126,7 @@ func (a *authority) write(dir string, template *x509.Certificate, callers []byte
 }
 
 // newSecureFloor returns a server that answers by TLS, with its CA and its certificate files. now is what its certificates take for time.
-func newSecureFloor(t *testing.T, now func() time.Time, change func(*Options)) (*floor, *authority, CertificateFiles) {
+func newSecureFloor(t *testing.T, now func() time.Time, change func(*Options)) (*testFloor, *authority, CertificateFiles) {
 	t.Helper()
 	ca := newAuthority(t)
 	files := ca.write(t.TempDir(), server(), ca.pem())
@@ -151,7 +151,7 @@ func newSecureFloor(t *testing.T, now func() time.Time, change func(*Options)) (
 }
 
 // dialAs connects with a certificate, nil: none.
-func (f *floor) dialAs(ca *authority, pair *tls.Certificate, change func(*tls.Config)) *grpc.ClientConn {
+func (f *testFloor) dialAs(ca *authority, pair *tls.Certificate, change func(*tls.Config)) *grpc.ClientConn {
 	c := &tls.Config{RootCAs: ca.pool(), ServerName: "127.0.0.1"}
 	if pair != nil {
 		// Shown whatever CAs the server asks for: a caller who means harm does not ask first.
@@ -280,7 +280,7 @@ func TestStationNamingAnotherStation(t *testing.T) {
 	}
 }
 
-func lastID(t *testing.T, f *floor) inspection.ID {
+func lastID(t *testing.T, f *testFloor) inspection.ID {
 	t.Helper()
 	page, err := f.store.List(t.Context(), inspection.Filter{}, 0, 1)
 	if err != nil || len(page) == 0 {
@@ -311,7 +311,7 @@ func TestClientCertificateUsedAsServer(t *testing.T) {
 	go func() { defer close(done); _ = impostor.Serve(l) }() // ends with Stop
 	defer func() { impostor.Stop(); <-done }()
 	mine := ca.pair(client("n1.floor.example"))
-	f := &floor{t: t, address: l.Addr().String()}
+	f := &testFloor{t: t, address: l.Addr().String()}
 	conn := f.dialAs(ca, &mine, nil)
 	if err := callEmpty(conn, "/admit.v1.StoreService/GetStoreStatus"); status.Code(err) != codes.Unavailable || !strings.Contains(err.Error(), "certificate") {
 		t.Errorf("the caller took an impostor for the server: %v", err)

@@ -21,7 +21,7 @@ import (
 )
 
 // put records an inspection without a stream. size makes its judgement about so many bytes long.
-func (f *floor) put(station string, size int) *inspection.Record {
+func (f *testFloor) put(station string, size int) *inspection.Record {
 	f.t.Helper()
 	u := newUnit(station, "TM0000001")
 	p, err := f.store.PartType(context.Background(), partType, 0)
@@ -59,7 +59,8 @@ func TestWatchResumesWithoutGapOrRepeat(t *testing.T) {
 	if err != nil || m.GetInspection() != nil {
 		t.Fatal(m, err)
 	}
-	token := m.GetResumeToken()
+	beginning := m.GetResumeToken()
+	token := beginning
 	var writer sync.WaitGroup
 	writer.Go(func() {
 		for i := range units {
@@ -87,6 +88,16 @@ func TestWatchResumesWithoutGapOrRepeat(t *testing.T) {
 			t.Fatalf("told of sequence %d, want %d", got, next)
 		}
 		next++
+	}
+	// And once more in one go, over several pages.
+	if watch, err = client.WatchInspections(ctx, &pb.WatchInspectionsRequest{ResumeToken: beginning}); err != nil {
+		t.Fatal(err)
+	}
+	for next := uint64(2); next < units+2; next++ {
+		m, err := watch.Recv()
+		if err != nil || m.GetInspection().GetSequence() != next {
+			t.Fatalf("told of %v, %v; want sequence %d", m.GetInspection().GetSequence(), err, next)
+		}
 	}
 	cancel()
 }
@@ -285,7 +296,7 @@ func TestWatchStations(t *testing.T) {
 		}
 		l := s.GetLastInspection()
 		if s.GetStation() != "N2" || s.GetContactHead() != "N2-A" || l.GetVerdict() != pb.Verdict_VERDICT_RETEST || l.GetUnit().GetSerial() != "TM0000007" ||
-			len(l.GetReasons()) == 0 || l.GetReasons()[0] != "The noise is too high." || l.GetAdvice() == "" || l.GetSequence() != 1 || s.GetLastSeenAt() == nil {
+			len(l.GetReasons()) == 0 || l.GetReasons()[0] != "The noise is too high. (too_noisy)" || l.GetAdvice() == "" || l.GetSequence() != 1 || s.GetLastSeenAt() == nil {
 			t.Errorf("station told as %v", s)
 		}
 		break

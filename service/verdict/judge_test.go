@@ -63,7 +63,7 @@ func TestDecisionRules(t *testing.T) {
 func TestPrecedence(t *testing.T) {
 	limits := []parttype.Limit{
 		{Quantity: parttype.MotionalResistance, Bounds: parttype.Bounds{Max: at(40)}},
-		{Quantity: parttype.QualityFactor, Bounds: parttype.Bounds{Min: at(25000)}},
+		{Quantity: parttype.QualityFactor, Bounds: parttype.Bounds{Min: at(25000), Max: at(90000)}},
 	}
 	good := Reading{Quantity: parttype.MotionalResistance, Where: Nowhere, Unit: UnitOhm, Measured: Value{20, 0.1}, HasValue: true}
 	bad := good
@@ -74,7 +74,10 @@ func TestPrecedence(t *testing.T) {
 	suspendedBad := bad
 	suspendedBad.SuspendedBy = []Cause{TooNoisy}
 	vague := bad
-	vague.Measured.StandardUncertainty = 20
+	vague.Measured = Value{48, 20}
+	clear := bad // far out, and as vague: that it is out is certain
+	clear.Measured = Value{4000, 200}
+	wide := Reading{Quantity: parttype.QualityFactor, Where: Nowhere, Unit: UnitNone, Measured: Value{26000, 1e7}, HasValue: true}
 	noNumber := good
 	noNumber.Measured = Value{math.NaN(), 1}
 	cause := []RetestCause{NewCause(TooNoisy, "signal 3 dB above the noise")}
@@ -91,6 +94,8 @@ func TestPrecedence(t *testing.T) {
 		{"cause without a suspended limit", []Reading{good, q}, cause, Retest},
 		{"no number", []Reading{noNumber, q}, nil, Retest},
 		{"broken, but by a reading too vague to mean it", []Reading{vague, q}, nil, Retest},
+		{"broken beyond doubt by a vague reading", []Reading{clear, q}, nil, Fail},
+		{"so vague that most of it lies outside two limits", []Reading{good, wide}, nil, Retest},
 	} {
 		j := Weigh(parttype.Decision{Rule: parttype.GuardedBoth, Confidence: 0.95}, Evidence{Limits: limits, Readings: c.readings, Causes: c.causes})
 		if j.Verdict != c.want {

@@ -5,6 +5,9 @@ import "fmt"
 // adviceAfterFail is what an operator does with a unit that failed.
 const adviceAfterFail = "Set the unit aside as failed."
 
+// adviceAfterLast is what an operator does with a unit that its last attempt left undecided.
+const adviceAfterLast = "Set the unit aside: its attempts are used up and none decided."
+
 // Reasons lists what led to the verdict, most important first: broken limits, then retest causes with their code and further undecided
 // limits; for a pass, that all is well.
 func (j *Judgement) Reasons() []string {
@@ -30,7 +33,11 @@ func (j *Judgement) Reasons() []string {
 		}
 	}
 	if len(out) == 0 && j.Verdict == Pass {
-		add(fmt.Sprintf("All %d limits are met.", len(j.Findings)), "")
+		if len(j.Findings) == 1 {
+			add("The limit is met.", "")
+		} else {
+			add(fmt.Sprintf("All %d limits are met.", len(j.Findings)), "")
+		}
 	}
 	return out
 }
@@ -42,6 +49,9 @@ func (j *Judgement) Advice() []string {
 		return nil
 	case Fail:
 		return []string{adviceAfterFail}
+	}
+	if j.Disposition == SetAside {
+		return []string{adviceAfterLast}
 	}
 	var out []string
 	seen := map[string]bool{}

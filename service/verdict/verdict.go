@@ -48,20 +48,22 @@ type Where struct {
 // Nowhere is the Where of a limit that exists once.
 var Nowhere = Where{DriveStep: -1}
 
-// Finding is one limit held against one estimate.
+// Finding is one limit held against one estimate: the mean of all valid readings of the unit so far.
 type Finding struct {
 	Quantity               parttype.Quantity
 	Where                  Where
-	Measured               Value // zero when Suspended without a value
+	Measured               Value // zero when there is no value
 	HasValue               bool
-	Unit                   string // of Measured and Bounds: "ohm", "F", "ppm", "dB", "Hz", "1", "ppm/pF"
+	CommonUncertainty      float64 // the part of the standard uncertainty that a further reading would have in common with this one
+	Readings               int     // attempts that Measured is the mean of; 0 without a value
+	Unit                   string  // of Measured and Bounds: "ohm", "F", "ppm", "dB", "Hz", "1", "ppm/pF"
 	Bounds                 parttype.Bounds
 	ConformanceProbability float64
 	Outcome                Outcome
 	Text                   string
 }
 
-// CauseOf is a retest cause by its code, in words, with advice to the operator. Station: caused by the station, uses up no attempt.
+// RetestCause is a retest cause by its code, in words, with advice to the operator. Station: caused by the station, uses up no attempt.
 type RetestCause struct {
 	Cause   Cause
 	Text    string
@@ -92,11 +94,42 @@ type DriveReading struct {
 	PowerWatt, MotionalResistanceOhm, MotionalResonanceHz Value
 }
 
+// The kinds of mode beside the main one.
+const (
+	OvertoneMode = "overtone"
+	UnwantedMode = "unwanted"
+)
+
 // ModeReading is one mode beside the main one. Kind: "overtone" or "unwanted".
 type ModeReading struct {
 	Kind                                      string
-	Order                                     int
+	Order                                     int // of an overtone that is near a whole multiple of the fundamental, else 0
 	FrequencyHz, ResistanceOhm, SuppressionDB Value
+	MultipleRatio                             *Value // fn/(n f1), nil without an order: 1.0028 is 0.28 % above n times the fundamental
+}
+
+// Order says on which overtone the main response lies.
+type Order struct {
+	Order       int     // the most probable one; 0: it cannot be told
+	Probability float64 // of that order
+	Candidates  []OrderCandidate
+	Responses   []OrderedResponse
+	Text        string // in words, with the reasons
+}
+
+// OrderCandidate is one overtone order with its probability.
+type OrderCandidate struct {
+	Order       int
+	Probability float64
+}
+
+// OrderedResponse is one response of the unit, the main one first, with the order that goes with the most probable one of the main response.
+type OrderedResponse struct {
+	Order            int
+	FrequencyHz      Value
+	MultipleRatio    *Value // fn/(n f1), by the lowest order that was measured; nil for that one
+	CapacitanceFarad *Value // Cn; nil where ohms are not known
+	CapacitanceShare *Value // n^2 Cn/(m^2 Cm) of this response and the lowest order m that was measured; 1 for an ideal plate
 }
 
 // Observability says what could not have been seen between two frequencies.
@@ -130,4 +163,19 @@ type Judgement struct {
 	Quality       *Quality
 	Budget        []BudgetLine
 	Remarks       []string // what a test engineer should know, one sentence each
+
+	Disposition           Disposition // what happens to the unit; none of a retest before the last attempt
+	ShuntCapacitanceFarad *Value      // C0 away from all modes; nil: not measured there. That of Main is the apparent one in its window
+	Order                 *Order      // nil: nothing is known of it
 }
+
+// Disposition is what finally happens to a unit.
+type Disposition string
+
+// The dispositions. A retest has none until the last attempt.
+const (
+	NoDisposition Disposition = ""
+	Passed        Disposition = "passed"
+	Failed        Disposition = "failed"
+	SetAside      Disposition = "set-aside"
+)

@@ -10,8 +10,8 @@ import (
 	"net/http"
 	"time"
 
+	"example.com/admit/service/floor"
 	"example.com/admit/service/inspection"
-	"example.com/admit/service/rpc"
 	"example.com/admit/service/verdict"
 )
 
@@ -20,7 +20,7 @@ var files embed.FS
 
 // Source is where the latest state of the stations comes from.
 type Source interface {
-	Latest() []rpc.StationState
+	Latest() []floor.State
 }
 
 // Pages serves the pages.
@@ -94,11 +94,13 @@ type stationView struct {
 // stations builds the view, lines and stations in the order of the source.
 func (p *Pages) stations() stationsView {
 	now := p.clock.Now()
-	v := stationsView{At: now.Format("15:04:05")}
+	v := stationsView{At: now.Format("2006-01-02 15:04:05 MST")}
 	for _, s := range p.source.Latest() {
 		name := s.Line
 		if name == "" {
-			name = "no line named"
+			name = "Stations without a line"
+		} else {
+			name = "Line " + name
 		}
 		if n := len(v.Lines); n == 0 || v.Lines[n-1].Name != name {
 			v.Lines = append(v.Lines, lineView{Name: name})
@@ -109,6 +111,9 @@ func (p *Pages) stations() stationsView {
 	return v
 }
 
+// stale is the age at which a verdict is shown as an old one.
+const stale = 10 * time.Minute
+
 // looks are word, shape and style of each verdict: colour is never the only sign.
 var looks = map[verdict.Verdict]struct{ look, word, mark string }{
 	verdict.Pass:   {"pass", "PASS", "✓"},
@@ -116,7 +121,7 @@ var looks = map[verdict.Verdict]struct{ look, word, mark string }{
 	verdict.Retest: {"retest", "RETEST", "↻"},
 }
 
-func station(s rpc.StationState, now time.Time) stationView {
+func station(s floor.State, now time.Time) stationView {
 	v := stationView{Name: string(s.Name), Look: "none", Word: "no unit yet", Mark: "·"}
 	r := s.Last
 	if r == nil {
@@ -128,6 +133,9 @@ func station(s rpc.StationState, now time.Time) stationView {
 	v.Unit = r.Begin.Unit.Name()
 	v.PartType = fmt.Sprintf("%s version %d", r.PartType.Name, r.PartType.Version)
 	v.When = ago(now.Sub(r.RecordedAt))
+	if now.Sub(r.RecordedAt) > stale {
+		v.Look += " stale"
+	}
 	v.Attempt = r.Attempt
 	v.Why, v.Next = j.Reasons(), j.Advice()
 	return v

@@ -7,14 +7,14 @@ import (
 	"testing"
 	"time"
 
+	"example.com/admit/service/floor"
 	"example.com/admit/service/inspection"
-	"example.com/admit/service/rpc"
 	"example.com/admit/service/verdict"
 )
 
-type floor []rpc.StationState
+type states []floor.State
 
-func (f floor) Latest() []rpc.StationState { return f }
+func (f states) Latest() []floor.State { return f }
 
 type fixed time.Time
 
@@ -35,10 +35,10 @@ func record(v verdict.Verdict, at time.Time) *inspection.Record {
 // TestStationsPage: every verdict has its word and shape, reasons and advice are there, and what a fixture sent cannot become markup.
 func TestStationsPage(t *testing.T) {
 	now := time.Date(2026, 11, 30, 9, 0, 0, 0, time.UTC)
-	state := func(name, line string, r *inspection.Record) rpc.StationState {
-		return rpc.StationState{Station: inspection.Station{Name: inspection.StationID(name), Line: line}, Last: r}
+	state := func(name, line string, r *inspection.Record) floor.State {
+		return floor.State{Station: inspection.Station{Name: inspection.StationID(name), Line: line}, Last: r}
 	}
-	pages, err := New(floor{
+	pages, err := New(states{
 		state("N1", "North", record(verdict.Pass, now.Add(-time.Minute))), state("N2", "North", record(verdict.Fail, now)),
 		state("S1", "South", record(verdict.Retest, now.Add(time.Hour))), state("S2", "South", nil),
 	}, fixed(now))
@@ -63,7 +63,7 @@ func TestStationsPage(t *testing.T) {
 
 // TestOnlyGet: nothing is changed by a page, and what is not there is not found.
 func TestOnlyGet(t *testing.T) {
-	pages, err := New(floor{}, fixed(time.Time{}))
+	pages, err := New(states{}, fixed(time.Time{}))
 	if err != nil {
 		t.Fatal(err)
 	}

@@ -27,6 +27,15 @@ func UnitToProto(u inspection.UnitID) *pb.Unit {
 	return &pb.Unit{Serial: string(u.Serial), Lot: string(u.Lot), Carrier: u.Carrier, Pocket: uint32(u.Pocket), Attempt: uint32(u.Attempt)}
 }
 
+func unitFromProto(m *pb.Unit) (u inspection.UnitID, err error) {
+	u = inspection.UnitID{Serial: inspection.Serial(m.GetSerial()), Lot: inspection.Lot(m.GetLot()), Carrier: m.GetCarrier()}
+	if u.Pocket, err = integer("unit.pocket", m.GetPocket(), 1000000); err != nil {
+		return u, err
+	}
+	u.Attempt, err = integer("unit.attempt", m.GetAttempt(), 1000)
+	return u, err
+}
+
 // BeginToProto converts what is said of an inspection before its first sample.
 func BeginToProto(b *inspection.Begin) *pb.Begin {
 	m := &pb.Begin{
@@ -60,12 +69,7 @@ func BeginFromProto(m *pb.Begin) (b inspection.Begin, err error) {
 	if b.Purpose, err = Purpose(m.GetPurpose()); err != nil {
 		return b, err
 	}
-	u := m.GetUnit()
-	b.Unit = inspection.UnitID{Serial: inspection.Serial(u.GetSerial()), Lot: inspection.Lot(u.GetLot()), Carrier: u.GetCarrier()}
-	if b.Unit.Pocket, err = integer("unit.pocket", u.GetPocket(), 1000000); err != nil {
-		return b, err
-	}
-	if b.Unit.Attempt, err = integer("unit.attempt", u.GetAttempt(), 1000); err != nil {
+	if b.Unit, err = unitFromProto(m.GetUnit()); err != nil {
 		return b, err
 	}
 	b.Station = inspection.StationID(m.GetStation())

@@ -10,6 +10,7 @@ import (
 func JudgementToProto(j *verdict.Judgement, software string) *pb.Judgement {
 	m := &pb.Judgement{
 		Verdict: verdicts.toWire(j.Verdict), Grade: j.Grade, ScaleUnknown: j.ScaleUnknown, Remarks: j.Remarks, SoftwareRevision: software,
+		Disposition: string(j.Disposition), ShuntCapacitanceAwayF: maybe(j.ShuntCapacitanceFarad), OvertoneOrder: OrderToProto(j.Order),
 	}
 	for i := range j.Findings {
 		m.Findings = append(m.Findings, findingToProto(&j.Findings[i]))
@@ -36,7 +37,10 @@ func JudgementToProto(j *verdict.Judgement, software string) *pb.Judgement {
 		})
 	}
 	for _, r := range j.Modes {
-		mode := &pb.ModeReading{Kind: r.Kind, FrequencyHz: estimate(r.FrequencyHz), ResistanceOhm: estimate(r.ResistanceOhm), SuppressionDb: estimate(r.SuppressionDB)}
+		mode := &pb.ModeReading{
+			Kind: r.Kind, FrequencyHz: estimate(r.FrequencyHz), ResistanceOhm: estimate(r.ResistanceOhm), SuppressionDb: estimate(r.SuppressionDB),
+			MultipleRatio: maybe(r.MultipleRatio),
+		}
 		if r.Order > 0 {
 			mode.Order = ptr(uint32(r.Order))
 		}
@@ -88,26 +92,47 @@ func findingToProto(f *verdict.Finding) *pb.Finding {
 	if f.HasValue {
 		m.Value = ptr(f.Measured.Value)
 		m.StandardUncertainty = ptr(f.Measured.StandardUncertainty)
+		m.CommonUncertainty, m.Readings = ptr(f.CommonUncertainty), uint32(f.Readings)
 		if f.Outcome != verdict.Suspended {
 			m.ConformanceProbability = ptr(f.ConformanceProbability)
 		}
 	}
-	if w := f.Where; w != verdict.Nowhere {
-		m.Where = &pb.Where{}
-		if w.DriveStep >= 0 {
-			m.Where.DriveStep = ptr(uint32(w.DriveStep))
-		}
-		if w.Order > 0 {
-			m.Where.Order = ptr(uint32(w.Order))
-		}
-		if w.FrequencyRatio > 0 {
-			m.Where.FrequencyRatio = ptr(w.FrequencyRatio)
-		}
-		if w.FromHz != 0 || w.ToHz != 0 {
-			m.Where.FromHz, m.Where.ToHz = ptr(w.FromHz), ptr(w.ToHz)
-		}
+	m.Where = whereToProto(f.Where)
+	return m
+}
+
+// whereToProto converts a place; one that does not apply is absent.
+func whereToProto(w verdict.Where) *pb.Where {
+	if w == verdict.Nowhere {
+		return nil
+	}
+	m := &pb.Where{}
+	if w.DriveStep >= 0 {
+		m.DriveStep = ptr(uint32(w.DriveStep))
+	}
+	if w.Order > 0 {
+		m.Order = ptr(uint32(w.Order))
+	}
+	if w.FrequencyRatio > 0 {
+		m.FrequencyRatio = ptr(w.FrequencyRatio)
+	}
+	if w.FromHz != 0 || w.ToHz != 0 {
+		m.FromHz, m.ToHz = ptr(w.FromHz), ptr(w.ToHz)
 	}
 	return m
+}
+
+func whereFromProto(m *pb.Where) verdict.Where {
+	w := verdict.Nowhere
+	if m == nil {
+		return w
+	}
+	if m.DriveStep != nil {
+		w.DriveStep = int(m.GetDriveStep())
+	}
+	w.Order, w.FrequencyRatio = int(m.GetOrder()), m.GetFrequencyRatio()
+	w.FromHz, w.ToHz = m.GetFromHz(), m.GetToHz()
+	return w
 }
 
 // JudgementFromProto converts a judgement back, with the revision that judged. A number that is none, or infinite, is refused: it would
@@ -120,6 +145,8 @@ func JudgementFromProto(m *pb.Judgement) (j verdict.Judgement, software string, 
 		return j, "", err
 	}
 	j.Grade, j.ScaleUnknown, j.Remarks = m.GetGrade(), m.GetScaleUnknown(), m.GetRemarks()
+	j.Disposition, j.ShuntCapacitanceFarad = verdict.Disposition(m.GetDisposition()), optional(m.GetShuntCapacitanceAwayF())
+	j.Order = orderFromProto(m.GetOvertoneOrder())
 	for _, f := range m.GetFindings() {
 		j.Findings = append(j.Findings, findingFromProto(f))
 	}
@@ -159,6 +186,7 @@ func JudgementFromProto(m *pb.Judgement) (j verdict.Judgement, software string, 
 		j.Modes = append(j.Modes, verdict.ModeReading{
 			Kind: r.GetKind(), Order: int(r.GetOrder()),
 			FrequencyHz: value(r.GetFrequencyHz()), ResistanceOhm: value(r.GetResistanceOhm()), SuppressionDB: value(r.GetSuppressionDb()),
+			MultipleRatio: optional(r.GetMultipleRatio()),
 		})
 	}
 	for _, o := range m.GetObservability() {
@@ -181,19 +209,14 @@ func JudgementFromProto(m *pb.Judgement) (j verdict.Judgement, software string, 
 
 func findingFromProto(m *pb.Finding) verdict.Finding {
 	f := verdict.Finding{
-		Quantity: parttype.Quantity(m.GetQuantity()), Where: verdict.Nowhere, Unit: m.GetUnit(),
+		Quantity: parttype.Quantity(m.GetQuantity()), Where: whereFromProto(m.GetWhere()), Unit: m.GetUnit(),
 		Bounds:                 parttype.Bounds{Min: m.Lower, Max: m.Upper},
 		HasValue:               m.Value != nil,
 		Measured:               verdict.Value{Value: m.GetValue(), StandardUncertainty: m.GetStandardUncertainty()},
+		CommonUncertainty:      m.GetCommonUncertainty(),
+		Readings:               int(m.GetReadings()),
 		ConformanceProbability: m.GetConformanceProbability(),
 		Outcome:                verdict.Outcome(m.GetOutcome()), Text: m.GetText(),
-	}
-	if w := m.GetWhere(); w != nil {
-		if w.DriveStep != nil {
-			f.Where.DriveStep = int(w.GetDriveStep())
-		}
-		f.Where.Order, f.Where.FrequencyRatio = int(w.GetOrder()), w.GetFrequencyRatio()
-		f.Where.FromHz, f.Where.ToHz = w.GetFromHz(), w.GetToHz()
 	}
 	return f
 }

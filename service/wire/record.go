@@ -17,6 +17,7 @@ func RecordToProto(r *inspection.Record) *pb.Inspection {
 		Attempt:       uint32(r.Attempt),
 		ContentSha256: bytesOf(r.ContentHash),
 		Caller:        r.Caller,
+		Background:    BackgroundToProto(&r.Background),
 	}
 	if r.Begin.Calibration != "" {
 		m.Calibration = &pb.CalibrationReference{CalibrationId: string(r.Begin.Calibration), Sha256: bytesOf(r.CalibrationHash)}
@@ -31,6 +32,9 @@ func RecordToProto(r *inspection.Record) *pb.Inspection {
 func RecordFromProto(m *pb.Inspection) (*inspection.Record, error) {
 	r := &inspection.Record{Sequence: m.GetSequence(), RecordedAt: instant(m.GetRecordedAt()), Attempt: int(m.GetAttempt()), Caller: m.GetCaller()}
 	var err error
+	if r.Background, err = BackgroundFromProto(m.GetBackground()); err != nil {
+		return nil, in("background", err)
+	}
 	if r.Begin, err = BeginFromProto(m.GetBegin()); err != nil {
 		return nil, in("begin", err)
 	}

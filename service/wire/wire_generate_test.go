@@ -166,6 +166,21 @@ func maybeValue(t *rapid.T, label string) *verdict.Value {
 	return &v
 }
 
+func drawWhere(t *rapid.T) verdict.Where {
+	w := verdict.Nowhere
+	switch rapid.IntRange(0, 4).Draw(t, "where") {
+	case 1:
+		w.DriveStep = rapid.IntRange(0, 1000).Draw(t, "step")
+	case 2:
+		w.Order = rapid.IntRange(1, 1000).Draw(t, "order")
+	case 3:
+		w.FrequencyRatio = positive(t, "ratio")
+	case 4:
+		w.FromHz, w.ToHz = number(t, "from"), positive(t, "to")
+	}
+	return w
+}
+
 func drawFinding(t *rapid.T) verdict.Finding {
 	f := verdict.Finding{
 		Quantity: parttype.Quantity(name(t, "quantity")), Where: verdict.Nowhere, Unit: name(t, "unit"), Text: name(t, "text"),
@@ -174,20 +189,12 @@ func drawFinding(t *rapid.T) verdict.Finding {
 	}
 	if f.HasValue {
 		f.Measured = drawValue(t, "value")
+		f.CommonUncertainty, f.Readings = number(t, "common"), rapid.IntRange(0, 99).Draw(t, "readings")
 		if f.Outcome != verdict.Suspended {
 			f.ConformanceProbability = rapid.Float64Range(0, 1).Draw(t, "probability")
 		}
 	}
-	switch rapid.IntRange(0, 4).Draw(t, "where") {
-	case 1:
-		f.Where.DriveStep = rapid.IntRange(0, 1000).Draw(t, "step")
-	case 2:
-		f.Where.Order = rapid.IntRange(1, 1000).Draw(t, "order")
-	case 3:
-		f.Where.FrequencyRatio = positive(t, "ratio")
-	case 4:
-		f.Where.FromHz, f.Where.ToHz = number(t, "from"), positive(t, "to")
-	}
+	f.Where = drawWhere(t)
 	return f
 }
 
@@ -211,7 +218,7 @@ func drawJudgement(t *rapid.T) verdict.Judgement {
 			return verdict.DriveReading{Step: rapid.IntRange(0, 99).Draw(t, "step"), PowerWatt: drawValue(t, "power"), MotionalResistanceOhm: drawValue(t, "R1"), MotionalResonanceHz: drawValue(t, "fs")}
 		}),
 		Modes: several(t, "modes", func(t *rapid.T) verdict.ModeReading {
-			return verdict.ModeReading{Kind: oneOf(t, "kind", "overtone", "unwanted"), Order: rapid.IntRange(0, 99).Draw(t, "order"), FrequencyHz: drawValue(t, "f"), ResistanceOhm: drawValue(t, "R"), SuppressionDB: drawValue(t, "s")}
+			return verdict.ModeReading{Kind: oneOf(t, "kind", "overtone", "unwanted"), Order: rapid.IntRange(0, 99).Draw(t, "order"), FrequencyHz: drawValue(t, "f"), ResistanceOhm: drawValue(t, "R"), SuppressionDB: drawValue(t, "s"), MultipleRatio: maybeValue(t, "multiple")}
 		}),
 		Observability: several(t, "observability", func(t *rapid.T) verdict.Observability {
 			return verdict.Observability{FromHz: number(t, "from"), ToHz: number(t, "to"), NarrowestWidthHz: number(t, "width"), SuppressionDB: number(t, "suppression")}
@@ -220,6 +227,23 @@ func drawJudgement(t *rapid.T) verdict.Judgement {
 			return verdict.BudgetLine{Source: name(t, "source"), MotionalResonanceHz: number(t, "fs"), MotionalResistanceOhm: number(t, "R1"), MotionalInductanceHenry: number(t, "L1"), ShuntCapacitanceFarad: number(t, "C0")}
 		}),
 		Remarks: several(t, "remarks", func(t *rapid.T) string { return name(t, "remark") }),
+
+		Disposition:           oneOf(t, "disposition", verdict.NoDisposition, verdict.Passed, verdict.Failed, verdict.SetAside),
+		ShuntCapacitanceFarad: maybeValue(t, "C0 away"),
+	}
+	if rapid.Bool().Draw(t, "order there") {
+		j.Order = &verdict.Order{
+			Order: rapid.IntRange(0, 99).Draw(t, "order"), Probability: number(t, "probability"), Text: name(t, "text"),
+			Candidates: several(t, "candidates", func(t *rapid.T) verdict.OrderCandidate {
+				return verdict.OrderCandidate{Order: rapid.IntRange(0, 99).Draw(t, "candidate"), Probability: number(t, "its probability")}
+			}),
+			Responses: several(t, "responses", func(t *rapid.T) verdict.OrderedResponse {
+				return verdict.OrderedResponse{
+					Order: rapid.IntRange(0, 99).Draw(t, "response"), FrequencyHz: drawValue(t, "f"), MultipleRatio: maybeValue(t, "multiple"),
+					CapacitanceFarad: maybeValue(t, "Cn"), CapacitanceShare: maybeValue(t, "share"),
+				}
+			}),
+		}
 	}
 	if rapid.Bool().Draw(t, "main there") {
 		m := verdict.Main{MotionalResonanceHz: drawValue(t, "fs"), QualityFactor: drawValue(t, "Q")}
@@ -271,9 +295,33 @@ func drawCalibration(t *rapid.T) *network.Calibration {
 	return c
 }
 
+func drawBackground(t *rapid.T) inspection.Background {
+	b := inspection.Background{
+		AttemptsUsed: rapid.IntRange(0, 99).Draw(t, "used"), HighAtLowDrive: rapid.IntRange(0, 99).Draw(t, "high"),
+		Readings: several(t, "earlier", func(t *rapid.T) verdict.Past {
+			return verdict.Past{
+				Quantity: parttype.Quantity(name(t, "quantity")), Where: drawWhere(t), Mean: drawValue(t, "mean"),
+				CommonUncertainty: number(t, "common"), Readings: rapid.IntRange(0, 99).Draw(t, "readings"),
+			}
+		}),
+	}
+	if rapid.Bool().Draw(t, "lot there") {
+		b.Lot = &inspection.LotMedian{
+			Units: rapid.IntRange(0, 99).Draw(t, "units"), ResistanceOhm: number(t, "R1"), CapacitanceFarad: number(t, "C1"), ShuntCapacitanceFarad: number(t, "C0"),
+		}
+	}
+	if rapid.Bool().Draw(t, "previous there") {
+		b.Previous = &inspection.PreviousUnit{
+			Unit:        drawBegin(t).Unit,
+			ResonanceHz: drawValue(t, "fs"), ResistanceOhm: drawValue(t, "R1"), CapacitanceFarad: drawValue(t, "C1"), ShuntCapacitanceFarad: drawValue(t, "C0"),
+		}
+	}
+	return b
+}
+
 func drawRecord(t *rapid.T) *inspection.Record {
 	r := &inspection.Record{
-		Begin: drawBegin(t), ContentHash: hash32(t, "content"), Judgement: drawJudgement(t), Software: name(t, "software"),
+		Begin: drawBegin(t), Background: drawBackground(t), ContentHash: hash32(t, "content"), Judgement: drawJudgement(t), Software: name(t, "software"),
 		PartType: inspection.Applied{PartTypeRef: inspection.PartTypeRef{Name: name(t, "applied"), Version: rapid.IntRange(0, 1<<30).Draw(t, "applied version")}, Hash: hash32(t, "part type hash")},
 		Sequence: rapid.Uint64().Draw(t, "sequence"), RecordedAt: when(t, "recorded at"), Attempt: rapid.IntRange(0, 1<<30).Draw(t, "attempt"), Caller: name(t, "caller"),
 		Sweeps: several(t, "sweeps", func(t *rapid.T) inspection.SweepHeader {

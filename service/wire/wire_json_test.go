@@ -34,10 +34,12 @@ func fullJudgement() *verdict.Judgement {
 		return verdict.Finding{
 			Quantity: q, Where: w, Measured: v(), HasValue: true, Unit: "ohm", Bounds: parttype.Bounds{Min: f(), Max: f()},
 			ConformanceProbability: 0.5, Outcome: o, Text: "What was measured, with its limit.",
+			CommonUncertainty: next() / 100, Readings: 2,
 		}
 	}
 	suspended := finding(parttype.UnwantedModeSuppression, verdict.Where{DriveStep: -1, FromHz: -1e5, ToHz: 5e5}, verdict.Suspended)
 	suspended.HasValue, suspended.Measured, suspended.ConformanceProbability = false, verdict.Value{}, 0
+	suspended.CommonUncertainty, suspended.Readings = 0, 0
 	return &verdict.Judgement{
 		Verdict: verdict.Pass, Grade: "A",
 		Findings: []verdict.Finding{
@@ -54,11 +56,17 @@ func fullJudgement() *verdict.Judgement {
 		},
 		Load:          &verdict.Load{LoadCapacitanceFarad: 1e-11, Connection: "series", LoadResonanceHz: v(), LoadResonanceResistanceOhm: v(), PullingSensitivityPPMPerPF: v()},
 		Drive:         []verdict.DriveReading{{Step: 0, PowerWatt: v(), MotionalResistanceOhm: v(), MotionalResonanceHz: v()}},
-		Modes:         []verdict.ModeReading{{Kind: "overtone", Order: 3, FrequencyHz: v(), ResistanceOhm: v(), SuppressionDB: v()}, {Kind: "unwanted", FrequencyHz: v(), ResistanceOhm: v(), SuppressionDB: v()}},
+		Modes:         []verdict.ModeReading{{Kind: "overtone", Order: 3, FrequencyHz: v(), ResistanceOhm: v(), SuppressionDB: v(), MultipleRatio: p()}, {Kind: "unwanted", FrequencyHz: v(), ResistanceOhm: v(), SuppressionDB: v()}},
 		Observability: []verdict.Observability{{FromHz: next(), ToHz: next(), NarrowestWidthHz: next(), SuppressionDB: next()}},
 		Quality:       &verdict.Quality{SNRDecibel: next(), ReducedChiSquare: next(), ResidualCorrelation: 0.25, SettlingTimeConstants: next()},
 		Budget:        []verdict.BudgetLine{{Source: "noise", MotionalResonanceHz: next(), MotionalResistanceOhm: next(), MotionalInductanceHenry: next(), ShuntCapacitanceFarad: next()}},
 		Remarks:       []string{"A sentence."},
+
+		Disposition: verdict.Passed, ShuntCapacitanceFarad: p(),
+		Order: &verdict.Order{
+			Order: 3, Probability: 0.75, Candidates: []verdict.OrderCandidate{{Order: 3, Probability: 0.75}}, Text: "On which overtone, and why.",
+			Responses: []verdict.OrderedResponse{{Order: 3, FrequencyHz: v(), MultipleRatio: p(), CapacitanceFarad: p(), CapacitanceShare: p()}},
+		},
 	}
 }
 

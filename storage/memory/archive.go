@@ -170,3 +170,22 @@ func (s *Store) Status(ctx context.Context) (inspection.StoreStatus, error) {
 	}
 	return status, nil
 }
+
+// OfUnit returns the inspections of one unit held against one part type for one purpose, newest first: those that its attempts are counted by.
+func (s *Store) OfUnit(ctx context.Context, purpose inspection.Purpose, unit inspection.UnitID, partType string, limit int) ([]*inspection.Record, error) {
+	if err := ctx.Err(); err != nil {
+		return nil, err
+	}
+	asked := inspection.Record{Begin: inspection.Begin{Purpose: purpose, Unit: unit}}
+	asked.PartType.Name = partType
+	key := unitOf(&asked)
+	s.mu.Lock()
+	defer s.mu.Unlock()
+	var page []*inspection.Record
+	for i := len(s.records) - 1; i >= 0 && len(page) < limit; i-- {
+		if unitOf(s.records[i]) == key {
+			page = append(page, copyOf(s.records[i]))
+		}
+	}
+	return page, nil
+}

@@ -1,5 +1,5 @@
 // Package memory keeps inspections, part types and calibrations in memory: the double that tests of the edges stand on, held to the
-// same contract as the store on disk. It implements inspection.Recorder, Catalogue, Archive and Publisher. It forgets everything when
+// same contract as the store on disk. It implements inspection.Recorder, Catalogue, Archive, Publisher and History. It forgets everything when
 // the process ends and has no limit, so it is never what a plant records into.
 //
 // One mutex guards everything. What is handed in is copied and what is handed out is a copy or never changes again, so no caller can
@@ -66,6 +66,7 @@ var (
 	_ inspection.Catalogue = (*Store)(nil)
 	_ inspection.Archive   = (*Store)(nil)
 	_ inspection.Publisher = (*Store)(nil)
+	_ inspection.History   = (*Store)(nil)
 )
 
 // New returns an empty store that takes its times from the clock.

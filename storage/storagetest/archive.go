@@ -67,6 +67,14 @@ func countsByQuarter(s *scene) {
 	}
 }
 
+// size returns how many inspections make a crowd: n, or a third of them in short mode.
+func size(n int) int {
+	if testing.Short() {
+		return n / 3
+	}
+	return n
+}
+
 // crowd records n inspections of few units, lots and stations in a random order of measuring, and returns the records.
 func (s *scene) crowd(random *rand.Rand, n int) []*inspection.Record {
 	var all []*inspection.Record
@@ -102,7 +110,7 @@ func (s *scene) crowd(random *rand.Rand, n int) []*inspection.Record {
 // countsAgainstModel holds counts against those of a plain list.
 func countsAgainstModel(s *scene) {
 	random := rand.New(rand.NewPCG(3, 1))
-	records := s.crowd(random, 150)
+	records := s.crowd(random, size(150))
 	for range 200 {
 		f := inspection.CountFilter{
 			Station: pick(random, inspection.StationID(""), "N1", "S4"), PartType: pick(random, "", partTypeName), Lot: pick(random, inspection.Lot(""), "L2601"),
@@ -146,7 +154,7 @@ func pick[T any](random *rand.Rand, from ...T) T { return from[random.IntN(len(f
 // listAgainstModel holds pages of lists, of every mixture of filters, against a plain list.
 func listAgainstModel(s *scene) {
 	random := rand.New(rand.NewPCG(4, 1))
-	records := s.crowd(random, 200)
+	records := s.crowd(random, size(200))
 	slices.Reverse(records)
 	hits := 0
 	for range 400 {
@@ -171,26 +179,26 @@ func listAgainstModel(s *scene) {
 		}
 		hits += len(want)
 		var got []*inspection.Record
-		size := 1 + random.IntN(60)
+		most := 1 + random.IntN(60)
 		for before := uint64(0); ; {
-			page, err := s.List(s.Context(), f, before, size)
+			page, err := s.List(s.Context(), f, before, most)
 			if err != nil {
 				s.Fatal(err)
 			}
 			got = append(got, page...)
-			if len(page) < size {
+			if len(page) < most {
 				break
 			}
 			before = page[len(page)-1].Sequence
 		}
 		if !slices.Equal(sequences(want), sequences(got)) {
-			s.Fatalf("list of %+v in pages of %d:\ngot  %v\nwant %v", f, size, sequences(got), sequences(want))
+			s.Fatalf("list of %+v in pages of %d:\ngot  %v\nwant %v", f, most, sequences(got), sequences(want))
 		}
 		if !reflect.DeepEqual(want, got) && len(want) > 0 {
 			s.same("the listed records", want, got)
 		}
 	}
-	if hits < 4000 {
+	if hits < size(4000) {
 		s.Errorf("the filters met %d records in all: too few to prove anything", hits)
 	}
 	if page, err := s.List(s.Context(), inspection.Filter{}, 0, 0); err != nil || len(page) > 0 {
@@ -203,7 +211,7 @@ func after(s *scene) {
 	if page, err := s.After(s.Context(), 0, 10); err != nil || len(page) > 0 {
 		s.Errorf("before anything is recorded: %d records, error %v", len(page), err)
 	}
-	records := s.crowd(rand.New(rand.NewPCG(5, 1)), 60)
+	records := s.crowd(rand.New(rand.NewPCG(5, 1)), size(60))
 	for from := 0; from <= len(records); from += 7 {
 		at := uint64(0)
 		if from > 0 {

@@ -51,6 +51,9 @@ func Run(t *testing.T, open func(t *testing.T) Backend) {
 		{"Status", status},
 		{"Restart", restart},
 	} {
-		t.Run(c.name, func(t *testing.T) { c.test(newScene(t, open)) })
+		t.Run(c.name, func(t *testing.T) {
+			t.Parallel()
+			c.test(newScene(t, open))
+		})
 	}
 }

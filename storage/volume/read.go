@@ -300,10 +300,19 @@ func readSample(r *tree.Reader, sequence uint64, ref SampleRef) ([]byte, error) 
 	if err != nil {
 		return nil, err
 	}
-	if !found || uint64(len(value.Content)) != ref.Length || envelope.Checksum(value.Content) != ref.Checksum {
-		return nil, &damage.Error{Bucket: bucketSamples, Key: key, Problem: "not the samples that the record names"}
+	if !found || !ref.fits(value.Content) {
+		return nil, notTheSamples(key)
 	}
 	return value.Content, nil
+}
+
+// fits says whether a block is the one the record names.
+func (r SampleRef) fits(block []byte) bool {
+	return uint64(len(block)) == r.Length && envelope.Checksum(block) == r.Checksum
+}
+
+func notTheSamples(key []byte) error {
+	return &damage.Error{Bucket: bucketSamples, Key: key, Problem: "not the samples that the record names"}
 }
 
 func page(limit int) int {

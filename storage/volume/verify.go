@@ -43,12 +43,12 @@ func (r *Report) add(err error) {
 // transactions, beside the writer. The error is for what kept it from reading; damage is in the report.
 func (v *Volume) Verify(ctx context.Context) (Report, error) {
 	v.life.RLock()
-	stage := v.stage
+	stage, kept := v.stage, v.samples != nil
 	v.life.RUnlock()
 	report := Report{}
 	var err error
 	if stage == Closed {
-		err = v.verifyClosed(ctx, &report)
+		err = v.verifyClosed(ctx, &report, kept)
 	} else {
 		if stage == Retired {
 			v.verifyStructure(&report)
@@ -71,7 +71,7 @@ func (v *Volume) verifyStructure(report *Report) {
 	}
 }
 
-func (v *Volume) verifyClosed(ctx context.Context, report *Report) error {
+func (v *Volume) verifyClosed(ctx context.Context, report *Report, samplesKept bool) error {
 	blocks := 1 + blocksFor(v.sums.recordsPages) + blocksFor(v.sums.samplesPages)
 	for i := range blocks {
 		if _, err := v.sums.readBlock(i); err != nil {
@@ -95,7 +95,7 @@ func (v *Volume) verifyClosed(ctx context.Context, report *Report) error {
 	if err := verifyPages(ctx, filepath.Join(v.folder, recordsName), v.sums.recordsPages, v.sums.records(), report); err != nil {
 		return err
 	}
-	if v.samples == nil {
+	if !samplesKept {
 		return nil
 	}
 	return verifyPages(ctx, filepath.Join(v.folder, samplesName), v.sums.samplesPages, v.sums.samples(), report)

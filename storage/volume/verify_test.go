@@ -80,7 +80,7 @@ func TestVerifyComparesTheParts(t *testing.T) {
 		{"samples of another", samplesName, bucketSamples,
 			func(b *bbolt.Bucket) error {
 				key := sampleKey(2, 0)
-				return b.Put(key, seal(bucketSamples, key, []byte("orphan")))
+				return b.Put(key, seal(bucketSamples, key, make([]byte, len(e.Samples[0].Bytes))))
 			}, "not the samples"},
 	} {
 		t.Run(c.name, func(t *testing.T) {

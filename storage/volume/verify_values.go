@@ -7,6 +7,7 @@ import (
 	"encoding/binary"
 	"errors"
 	"fmt"
+	"hash/maphash"
 	"path/filepath"
 	"slices"
 
@@ -27,16 +28,34 @@ type verifier struct {
 
 	upTo     uint64             // last sequence looked at
 	written  bool               // the volume may be written meanwhile
-	records  uint64             // sound or not
-	terms    uint64             // index entries the records call for
-	samples  uint64             // sample blocks the records call for
+	records  uint64             // read so far
+	called   keySet             // index entries the records call for
+	samples  []boundSample      // sample blocks the records call for, in the order of their keys
 	counters map[string][]int64 // sums of the deltas
 	objects  map[ObjectRef]bool // objects found where a record needs them
 	unsure   bool               // some record could not be read, so sums cannot be held against it
+	seed     maphash.Seed
+}
+
+// boundSample is a sample block with the record that names it.
+type boundSample struct {
+	sequence uint64
+	ref      SampleRef
+}
+
+// keySet tells sets of keys apart without keeping them: their number and the sum of their hashes. Two passes in sequence over records and
+// index then compare, where looking each key up would take ten times as long.
+type keySet struct {
+	count, sum uint64
+}
+
+func (s *keySet) add(seed maphash.Seed, key []byte) {
+	s.count++
+	s.sum += maphash.Bytes(seed, key)
 }
 
 func (c *verifier) run(ctx context.Context) error {
-	c.counters, c.objects = make(map[string][]int64), make(map[ObjectRef]bool)
+	c.counters, c.objects, c.seed = make(map[string][]int64), make(map[ObjectRef]bool), maphash.MakeSeed()
 	var facts state
 	err := c.volume.view(func(r *tree.Reader) (err error) {
 		if _, err = readIdentity(r); err != nil {
@@ -53,7 +72,7 @@ func (c *verifier) run(ctx context.Context) error {
 	if err := c.readRecords(ctx, 0, c.upTo); err != nil {
 		return err
 	}
-	if c.records != facts.records {
+	if c.records != facts.records && !c.unsure {
 		c.finding(bucketMeta, []byte(keyState), "the volume counts %d records up to %d, there are %d", facts.records, c.upTo, c.records)
 	}
 	for _, step := range []func(context.Context) error{c.readTerms, c.readObjects, c.readRevisions, c.readSamples, c.compareCounters} {
@@ -92,12 +111,13 @@ func (c *verifier) each(ctx context.Context, view func(func(*tree.Reader) error)
 		}
 		more = false
 		err := view(func(r *tree.Reader) error {
-			count := 0
+			count, size := 0, 0
 			return pagefile.Walk(r, bucket, from, Ascending, anyKey, func(key, stored []byte) (bool, error) {
-				if count++; count > chunk {
+				if count >= chunk || size > maxPageBytes {
 					more = true
 					return false, nil
 				}
+				count, size = count+1, size+len(stored)
 				from = append(bytes.Clone(key), 0)
 				value, err := envelope.Open(bucket, key, stored)
 				if err == nil {
@@ -121,12 +141,26 @@ func (c *verifier) each(ctx context.Context, view func(func(*tree.Reader) error)
 	return nil
 }
 
-// readRecords checks the records above low up to high: the record itself, its index entries, its objects. Samples come separately, from
-// their own file.
+// readRecords checks the records above low up to high, and their objects, and notes what else they call for.
 func (c *verifier) readRecords(ctx context.Context, low, high uint64) error {
-	var refs []SampleRef
-	var owners []uint64
-	err := c.each(ctx, c.inRecords, bucketRecords, recordKey(low+1), func(r *tree.Reader, key []byte, value envelope.Value) error {
+	return c.eachRecord(ctx, low, high, func(r *tree.Reader, record Record) error {
+		c.records++
+		c.report.Records++
+		for _, key := range termKeys(record) {
+			c.called.add(c.seed, key)
+		}
+		for _, ref := range record.Samples {
+			c.samples = append(c.samples, boundSample{record.Sequence, ref})
+		}
+		for _, d := range record.Deltas {
+			c.counters[string(d.Key)] = addNumbers(c.counters[string(d.Key)], d.Values)
+		}
+		return c.checkObjects(r, record)
+	})
+}
+
+func (c *verifier) eachRecord(ctx context.Context, low, high uint64, visit func(*tree.Reader, Record) error) error {
+	return c.each(ctx, c.inRecords, bucketRecords, recordKey(low+1), func(r *tree.Reader, key []byte, value envelope.Value) error {
 		if len(key) != 8 {
 			return &damage.Error{Bucket: bucketRecords, Key: key, Problem: "not a sequence number"}
 		}
@@ -134,57 +168,23 @@ func (c *verifier) readRecords(ctx context.Context, low, high uint64) error {
 		if sequence > high {
 			return errEnough
 		}
-		c.records++
-		c.report.Records++
 		record, err := c.volume.decode(r, sequence, value)
 		if err != nil {
 			c.unsure = true
 			return err
 		}
-		for _, ref := range record.Samples {
-			refs, owners = append(refs, ref), append(owners, sequence)
-		}
-		for _, d := range record.Deltas {
-			c.counters[string(d.Key)] = addNumbers(c.counters[string(d.Key)], d.Values)
-		}
-		if err := c.checkTerms(r, record); err != nil {
-			return err
-		}
-		return c.checkObjects(r, record)
+		return visit(r, record)
 	})
-	if err != nil || c.volume.samples == nil {
-		return err
-	}
-	for i, ref := range refs {
-		if err := ctx.Err(); err != nil {
-			return err
-		}
-		c.samples++
-		c.report.add(c.inSamples(func(r *tree.Reader) error {
-			_, err := readSample(r, owners[i], ref)
-			return err
-		}))
-	}
-	return nil
 }
 
-func (c *verifier) checkTerms(r *tree.Reader, record Record) error {
+// termKeys returns the index keys of a record, each once.
+func termKeys(record Record) [][]byte {
 	keys := make([][]byte, 0, len(record.Terms))
 	for _, t := range record.Terms {
 		keys = append(keys, termKey(t, record.Sequence))
 	}
 	slices.SortFunc(keys, bytes.Compare)
-	for _, key := range slices.CompactFunc(keys, bytes.Equal) {
-		c.terms++
-		_, found, err := pagefile.Get(r, bucketTerms, key)
-		if err != nil {
-			return err
-		}
-		if !found {
-			return &damage.Error{Bucket: bucketTerms, Key: key, Problem: fmt.Sprintf("record %d is not in the index", record.Sequence)}
-		}
-	}
-	return nil
+	return slices.CompactFunc(keys, bytes.Equal)
 }
 
 func (c *verifier) checkObjects(r *tree.Reader, record Record) error {
@@ -204,21 +204,36 @@ func (c *verifier) checkObjects(r *tree.Reader, record Record) error {
 	return nil
 }
 
-// readTerms counts the index entries: every record's entries are there already, so equal numbers mean there are no others.
+// readTerms holds the index against what the records call for.
 func (c *verifier) readTerms(ctx context.Context) error {
-	var found uint64
+	var found keySet
 	err := c.each(ctx, c.inRecords, bucketTerms, []byte{0}, func(_ *tree.Reader, key []byte, _ envelope.Value) error {
 		c.report.Terms++
 		_, sequence, err := parseTermKey(key)
 		if err == nil && sequence <= c.upTo {
-			found++
+			found.add(c.seed, key)
 		}
 		return err
 	})
-	if err == nil && !c.unsure && found != c.terms {
-		c.finding(bucketTerms, nil, "%d index entries, the records call for %d", found, c.terms)
+	if err != nil || c.unsure || found == c.called {
+		return err
 	}
-	return err
+	c.finding(bucketTerms, nil, "%d index entries, the records call for %d others", found.count, c.called.count)
+	return c.nameMissing(ctx)
+}
+
+// nameMissing looks every index entry up, to say which are not there.
+func (c *verifier) nameMissing(ctx context.Context) error {
+	return c.eachRecord(ctx, 0, c.upTo, func(r *tree.Reader, record Record) error {
+		for _, key := range termKeys(record) {
+			if _, found, err := pagefile.Get(r, bucketTerms, key); err != nil {
+				return err
+			} else if !found {
+				c.finding(bucketTerms, key, "record %d is not in the index", record.Sequence)
+			}
+		}
+		return nil
+	})
 }
 
 func (c *verifier) readObjects(ctx context.Context) error {
@@ -240,38 +255,56 @@ func (c *verifier) readRevisions(ctx context.Context) error {
 	if c.records > 0 {
 		err = check(c.inRecords)
 	}
-	if err == nil && c.samples > 0 {
+	if err == nil && len(c.samples) > 0 {
 		err = check(c.inSamples)
 	}
 	return err
 }
 
-// readSamples reads all of the samples file; what no record calls for is an orphan.
+// readSamples reads all of the samples file, which a volume that is not closed always has; what no record calls for is an orphan.
 func (c *verifier) readSamples(ctx context.Context) error {
-	if c.volume.samples == nil {
-		return nil
-	}
 	c.report.add(c.inSamples(func(r *tree.Reader) error {
 		_, err := readIdentity(r)
 		return err
 	}))
-	var found uint64
-	err := c.each(ctx, c.inSamples, bucketSamples, []byte{0}, func(_ *tree.Reader, key []byte, _ envelope.Value) error {
-		c.report.Samples++
+	expected := c.samples
+	err := c.each(ctx, c.inSamples, bucketSamples, []byte{0}, func(_ *tree.Reader, key []byte, value envelope.Value) error {
 		if len(key) != 12 {
 			return &damage.Error{Bucket: bucketSamples, Key: key, Problem: "not a sequence number and an index"}
 		}
 		if c.written && binary.BigEndian.Uint64(key) > c.upTo {
 			return errEnough
 		}
-		found++
+		c.report.Samples++
+		for len(expected) > 0 && bytes.Compare(expected[0].key(), key) < 0 {
+			c.report.add(notTheSamples(expected[0].key()))
+			expected = expected[1:]
+		}
+		if len(expected) == 0 || !bytes.Equal(expected[0].key(), key) {
+			c.report.Orphans++
+			return nil
+		}
+		ref := expected[0].ref
+		expected = expected[1:]
+		if !ref.fits(value.Content) {
+			return notTheSamples(key)
+		}
 		return nil
 	})
-	if err == nil && !c.unsure && found > c.samples {
-		c.report.Orphans = found - c.samples
+	if err != nil {
+		return err
 	}
-	return err
+	for _, missing := range expected {
+		c.report.add(notTheSamples(missing.key()))
+	}
+	if c.unsure {
+		// They may belong to a record that cannot be read.
+		c.report.Orphans = 0
+	}
+	return nil
 }
+
+func (b boundSample) key() []byte { return sampleKey(b.sequence, b.ref.Index) }
 
 // compareCounters holds the counters against the sums of the deltas. Records that arrived meanwhile are read first, until so few remain
 // that the last of them and the counters can be read in one transaction.

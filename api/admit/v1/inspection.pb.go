@@ -266,7 +266,9 @@ type Inspection struct {
 	// SHA-256 over the canonical content (see End), 32 bytes.
 	ContentSha256 []byte `protobuf:"bytes,10,opt,name=content_sha256,json=contentSha256,proto3" json:"content_sha256,omitempty"`
 	// Who sent it: the name in the caller's certificate, or loopback.
-	Caller        string `protobuf:"bytes,11,opt,name=caller,proto3" json:"caller,omitempty"`
+	Caller string `protobuf:"bytes,11,opt,name=caller,proto3" json:"caller,omitempty"`
+	// What the judgement knew of earlier inspections. Absent: nothing.
+	Background    *Background `protobuf:"bytes,12,opt,name=background,proto3" json:"background,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -378,6 +380,333 @@ func (x *Inspection) GetCaller() string {
 	return ""
 }
 
+func (x *Inspection) GetBackground() *Background {
+	if x != nil {
+		return x.Background
+	}
+	return nil
+}
+
+// What earlier inspections tell about one that is judged. With the samples, the part type, the calibration and this the
+// judgement can be repeated.
+type Background struct {
+	state protoimpl.MessageState `protogen:"open.v1"`
+	// Attempts that the unit has used up since it last passed.
+	AttemptsUsed uint32 `protobuf:"varint,1,opt,name=attempts_used,json=attemptsUsed,proto3" json:"attempts_used,omitempty"`
+	// How many of them found the motional resistance high at the first low drive level.
+	HighAtLowDrive uint32 `protobuf:"varint,2,opt,name=high_at_low_drive,json=highAtLowDrive,proto3" json:"high_at_low_drive,omitempty"`
+	// Means of the unit's valid readings so far, one for each limit.
+	Readings []*EarlierReading `protobuf:"bytes,3,rep,name=readings,proto3" json:"readings,omitempty"`
+	// Running medians of the lot. Absent: too few units.
+	Lot *LotMedian `protobuf:"bytes,4,opt,name=lot,proto3" json:"lot,omitempty"`
+	// The unit that was measured before at this station. Absent: none of this part type.
+	Previous      *PreviousUnit `protobuf:"bytes,5,opt,name=previous,proto3" json:"previous,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *Background) Reset() {
+	*x = Background{}
+	mi := &file_admit_v1_inspection_proto_msgTypes[3]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *Background) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*Background) ProtoMessage() {}
+
+func (x *Background) ProtoReflect() protoreflect.Message {
+	mi := &file_admit_v1_inspection_proto_msgTypes[3]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use Background.ProtoReflect.Descriptor instead.
+func (*Background) Descriptor() ([]byte, []int) {
+	return file_admit_v1_inspection_proto_rawDescGZIP(), []int{3}
+}
+
+func (x *Background) GetAttemptsUsed() uint32 {
+	if x != nil {
+		return x.AttemptsUsed
+	}
+	return 0
+}
+
+func (x *Background) GetHighAtLowDrive() uint32 {
+	if x != nil {
+		return x.HighAtLowDrive
+	}
+	return 0
+}
+
+func (x *Background) GetReadings() []*EarlierReading {
+	if x != nil {
+		return x.Readings
+	}
+	return nil
+}
+
+func (x *Background) GetLot() *LotMedian {
+	if x != nil {
+		return x.Lot
+	}
+	return nil
+}
+
+func (x *Background) GetPrevious() *PreviousUnit {
+	if x != nil {
+		return x.Previous
+	}
+	return nil
+}
+
+// The mean of the valid readings of earlier attempts, for one limit.
+type EarlierReading struct {
+	state protoimpl.MessageState `protogen:"open.v1"`
+	// Which limit: a key of the limits file.
+	Quantity string `protobuf:"bytes,1,opt,name=quantity,proto3" json:"quantity,omitempty"`
+	// Which of several alike. Absent for a limit that exists once.
+	Where *Where `protobuf:"bytes,2,opt,name=where,proto3" json:"where,omitempty"`
+	// The mean, in the unit of the limit.
+	Mean *Estimate `protobuf:"bytes,3,opt,name=mean,proto3" json:"mean,omitempty"`
+	// The part of its standard uncertainty that further readings share.
+	CommonUncertainty float64 `protobuf:"fixed64,4,opt,name=common_uncertainty,json=commonUncertainty,proto3" json:"common_uncertainty,omitempty"`
+	// How many readings it is the mean of.
+	Readings      uint32 `protobuf:"varint,5,opt,name=readings,proto3" json:"readings,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *EarlierReading) Reset() {
+	*x = EarlierReading{}
+	mi := &file_admit_v1_inspection_proto_msgTypes[4]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *EarlierReading) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*EarlierReading) ProtoMessage() {}
+
+func (x *EarlierReading) ProtoReflect() protoreflect.Message {
+	mi := &file_admit_v1_inspection_proto_msgTypes[4]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use EarlierReading.ProtoReflect.Descriptor instead.
+func (*EarlierReading) Descriptor() ([]byte, []int) {
+	return file_admit_v1_inspection_proto_rawDescGZIP(), []int{4}
+}
+
+func (x *EarlierReading) GetQuantity() string {
+	if x != nil {
+		return x.Quantity
+	}
+	return ""
+}
+
+func (x *EarlierReading) GetWhere() *Where {
+	if x != nil {
+		return x.Where
+	}
+	return nil
+}
+
+func (x *EarlierReading) GetMean() *Estimate {
+	if x != nil {
+		return x.Mean
+	}
+	return nil
+}
+
+func (x *EarlierReading) GetCommonUncertainty() float64 {
+	if x != nil {
+		return x.CommonUncertainty
+	}
+	return 0
+}
+
+func (x *EarlierReading) GetReadings() uint32 {
+	if x != nil {
+		return x.Readings
+	}
+	return 0
+}
+
+// Running medians of the units of a lot that passed.
+type LotMedian struct {
+	state protoimpl.MessageState `protogen:"open.v1"`
+	// How many units.
+	Units uint32 `protobuf:"varint,1,opt,name=units,proto3" json:"units,omitempty"`
+	// Motional resistance R1, ohm.
+	MotionalResistanceOhm float64 `protobuf:"fixed64,2,opt,name=motional_resistance_ohm,json=motionalResistanceOhm,proto3" json:"motional_resistance_ohm,omitempty"`
+	// Motional capacitance C1, farad.
+	MotionalCapacitanceF float64 `protobuf:"fixed64,3,opt,name=motional_capacitance_f,json=motionalCapacitanceF,proto3" json:"motional_capacitance_f,omitempty"`
+	// Shunt capacitance C0, farad.
+	ShuntCapacitanceF float64 `protobuf:"fixed64,4,opt,name=shunt_capacitance_f,json=shuntCapacitanceF,proto3" json:"shunt_capacitance_f,omitempty"`
+	unknownFields     protoimpl.UnknownFields
+	sizeCache         protoimpl.SizeCache
+}
+
+func (x *LotMedian) Reset() {
+	*x = LotMedian{}
+	mi := &file_admit_v1_inspection_proto_msgTypes[5]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *LotMedian) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*LotMedian) ProtoMessage() {}
+
+func (x *LotMedian) ProtoReflect() protoreflect.Message {
+	mi := &file_admit_v1_inspection_proto_msgTypes[5]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use LotMedian.ProtoReflect.Descriptor instead.
+func (*LotMedian) Descriptor() ([]byte, []int) {
+	return file_admit_v1_inspection_proto_rawDescGZIP(), []int{5}
+}
+
+func (x *LotMedian) GetUnits() uint32 {
+	if x != nil {
+		return x.Units
+	}
+	return 0
+}
+
+func (x *LotMedian) GetMotionalResistanceOhm() float64 {
+	if x != nil {
+		return x.MotionalResistanceOhm
+	}
+	return 0
+}
+
+func (x *LotMedian) GetMotionalCapacitanceF() float64 {
+	if x != nil {
+		return x.MotionalCapacitanceF
+	}
+	return 0
+}
+
+func (x *LotMedian) GetShuntCapacitanceF() float64 {
+	if x != nil {
+		return x.ShuntCapacitanceF
+	}
+	return 0
+}
+
+// The unit that was measured before; standard uncertainties are those of a repeat, noise and contact.
+type PreviousUnit struct {
+	state protoimpl.MessageState `protogen:"open.v1"`
+	// Which unit.
+	Unit *Unit `protobuf:"bytes,1,opt,name=unit,proto3" json:"unit,omitempty"`
+	// Motional resonance frequency fs, Hz.
+	MotionalResonanceHz *Estimate `protobuf:"bytes,2,opt,name=motional_resonance_hz,json=motionalResonanceHz,proto3" json:"motional_resonance_hz,omitempty"`
+	// Motional resistance R1, ohm.
+	MotionalResistanceOhm *Estimate `protobuf:"bytes,3,opt,name=motional_resistance_ohm,json=motionalResistanceOhm,proto3" json:"motional_resistance_ohm,omitempty"`
+	// Motional capacitance C1, farad.
+	MotionalCapacitanceF *Estimate `protobuf:"bytes,4,opt,name=motional_capacitance_f,json=motionalCapacitanceF,proto3" json:"motional_capacitance_f,omitempty"`
+	// Shunt capacitance C0, farad.
+	ShuntCapacitanceF *Estimate `protobuf:"bytes,5,opt,name=shunt_capacitance_f,json=shuntCapacitanceF,proto3" json:"shunt_capacitance_f,omitempty"`
+	unknownFields     protoimpl.UnknownFields
+	sizeCache         protoimpl.SizeCache
+}
+
+func (x *PreviousUnit) Reset() {
+	*x = PreviousUnit{}
+	mi := &file_admit_v1_inspection_proto_msgTypes[6]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *PreviousUnit) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*PreviousUnit) ProtoMessage() {}
+
+func (x *PreviousUnit) ProtoReflect() protoreflect.Message {
+	mi := &file_admit_v1_inspection_proto_msgTypes[6]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use PreviousUnit.ProtoReflect.Descriptor instead.
+func (*PreviousUnit) Descriptor() ([]byte, []int) {
+	return file_admit_v1_inspection_proto_rawDescGZIP(), []int{6}
+}
+
+func (x *PreviousUnit) GetUnit() *Unit {
+	if x != nil {
+		return x.Unit
+	}
+	return nil
+}
+
+func (x *PreviousUnit) GetMotionalResonanceHz() *Estimate {
+	if x != nil {
+		return x.MotionalResonanceHz
+	}
+	return nil
+}
+
+func (x *PreviousUnit) GetMotionalResistanceOhm() *Estimate {
+	if x != nil {
+		return x.MotionalResistanceOhm
+	}
+	return nil
+}
+
+func (x *PreviousUnit) GetMotionalCapacitanceF() *Estimate {
+	if x != nil {
+		return x.MotionalCapacitanceF
+	}
+	return nil
+}
+
+func (x *PreviousUnit) GetShuntCapacitanceF() *Estimate {
+	if x != nil {
+		return x.ShuntCapacitanceF
+	}
+	return nil
+}
+
 // A part type version, pinned by its content.
 type PartTypeReference struct {
 	state protoimpl.MessageState `protogen:"open.v1"`
@@ -393,7 +722,7 @@ type PartTypeReference struct {
 
 func (x *PartTypeReference) Reset() {
 	*x = PartTypeReference{}
-	mi := &file_admit_v1_inspection_proto_msgTypes[3]
+	mi := &file_admit_v1_inspection_proto_msgTypes[7]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -405,7 +734,7 @@ func (x *PartTypeReference) String() string {
 func (*PartTypeReference) ProtoMessage() {}
 
 func (x *PartTypeReference) ProtoReflect() protoreflect.Message {
-	mi := &file_admit_v1_inspection_proto_msgTypes[3]
+	mi := &file_admit_v1_inspection_proto_msgTypes[7]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -418,7 +747,7 @@ func (x *PartTypeReference) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use PartTypeReference.ProtoReflect.Descriptor instead.
 func (*PartTypeReference) Descriptor() ([]byte, []int) {
-	return file_admit_v1_inspection_proto_rawDescGZIP(), []int{3}
+	return file_admit_v1_inspection_proto_rawDescGZIP(), []int{7}
 }
 
 func (x *PartTypeReference) GetName() string {
@@ -455,7 +784,7 @@ type CalibrationReference struct {
 
 func (x *CalibrationReference) Reset() {
 	*x = CalibrationReference{}
-	mi := &file_admit_v1_inspection_proto_msgTypes[4]
+	mi := &file_admit_v1_inspection_proto_msgTypes[8]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -467,7 +796,7 @@ func (x *CalibrationReference) String() string {
 func (*CalibrationReference) ProtoMessage() {}
 
 func (x *CalibrationReference) ProtoReflect() protoreflect.Message {
-	mi := &file_admit_v1_inspection_proto_msgTypes[4]
+	mi := &file_admit_v1_inspection_proto_msgTypes[8]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -480,7 +809,7 @@ func (x *CalibrationReference) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use CalibrationReference.ProtoReflect.Descriptor instead.
 func (*CalibrationReference) Descriptor() ([]byte, []int) {
-	return file_admit_v1_inspection_proto_rawDescGZIP(), []int{4}
+	return file_admit_v1_inspection_proto_rawDescGZIP(), []int{8}
 }
 
 func (x *CalibrationReference) GetCalibrationId() string {
@@ -522,7 +851,7 @@ const file_admit_v1_inspection_proto_rawDesc = "" +
 	"\x11_reference_locked\"\\\n" +
 	"\vTemperature\x12\x17\n" +
 	"\avalue_c\x18\x01 \x01(\x01R\x06valueC\x124\n" +
-	"\x16standard_uncertainty_c\x18\x02 \x01(\x01R\x14standardUncertaintyC\"\xe8\x03\n" +
+	"\x16standard_uncertainty_c\x18\x02 \x01(\x01R\x14standardUncertaintyC\"\x9e\x04\n" +
 	"\n" +
 	"Inspection\x12#\n" +
 	"\rinspection_id\x18\x01 \x01(\tR\finspectionId\x12\x1a\n" +
@@ -537,7 +866,34 @@ const file_admit_v1_inspection_proto_rawDesc = "" +
 	"\aattempt\x18\t \x01(\rR\aattempt\x12%\n" +
 	"\x0econtent_sha256\x18\n" +
 	" \x01(\fR\rcontentSha256\x12\x16\n" +
-	"\x06caller\x18\v \x01(\tR\x06caller\"Y\n" +
+	"\x06caller\x18\v \x01(\tR\x06caller\x124\n" +
+	"\n" +
+	"background\x18\f \x01(\v2\x14.admit.v1.BackgroundR\n" +
+	"background\"\xed\x01\n" +
+	"\n" +
+	"Background\x12#\n" +
+	"\rattempts_used\x18\x01 \x01(\rR\fattemptsUsed\x12)\n" +
+	"\x11high_at_low_drive\x18\x02 \x01(\rR\x0ehighAtLowDrive\x124\n" +
+	"\breadings\x18\x03 \x03(\v2\x18.admit.v1.EarlierReadingR\breadings\x12%\n" +
+	"\x03lot\x18\x04 \x01(\v2\x13.admit.v1.LotMedianR\x03lot\x122\n" +
+	"\bprevious\x18\x05 \x01(\v2\x16.admit.v1.PreviousUnitR\bprevious\"\xc6\x01\n" +
+	"\x0eEarlierReading\x12\x1a\n" +
+	"\bquantity\x18\x01 \x01(\tR\bquantity\x12%\n" +
+	"\x05where\x18\x02 \x01(\v2\x0f.admit.v1.WhereR\x05where\x12&\n" +
+	"\x04mean\x18\x03 \x01(\v2\x12.admit.v1.EstimateR\x04mean\x12-\n" +
+	"\x12common_uncertainty\x18\x04 \x01(\x01R\x11commonUncertainty\x12\x1a\n" +
+	"\breadings\x18\x05 \x01(\rR\breadings\"\xbf\x01\n" +
+	"\tLotMedian\x12\x14\n" +
+	"\x05units\x18\x01 \x01(\rR\x05units\x126\n" +
+	"\x17motional_resistance_ohm\x18\x02 \x01(\x01R\x15motionalResistanceOhm\x124\n" +
+	"\x16motional_capacitance_f\x18\x03 \x01(\x01R\x14motionalCapacitanceF\x12.\n" +
+	"\x13shunt_capacitance_f\x18\x04 \x01(\x01R\x11shuntCapacitanceF\"\xd4\x02\n" +
+	"\fPreviousUnit\x12\"\n" +
+	"\x04unit\x18\x01 \x01(\v2\x0e.admit.v1.UnitR\x04unit\x12F\n" +
+	"\x15motional_resonance_hz\x18\x02 \x01(\v2\x12.admit.v1.EstimateR\x13motionalResonanceHz\x12J\n" +
+	"\x17motional_resistance_ohm\x18\x03 \x01(\v2\x12.admit.v1.EstimateR\x15motionalResistanceOhm\x12H\n" +
+	"\x16motional_capacitance_f\x18\x04 \x01(\v2\x12.admit.v1.EstimateR\x14motionalCapacitanceF\x12B\n" +
+	"\x13shunt_capacitance_f\x18\x05 \x01(\v2\x12.admit.v1.EstimateR\x11shuntCapacitanceF\"Y\n" +
 	"\x11PartTypeReference\x12\x12\n" +
 	"\x04name\x18\x01 \x01(\tR\x04name\x12\x18\n" +
 	"\aversion\x18\x02 \x01(\rR\aversion\x12\x16\n" +
@@ -558,36 +914,53 @@ func file_admit_v1_inspection_proto_rawDescGZIP() []byte {
 	return file_admit_v1_inspection_proto_rawDescData
 }
 
-var file_admit_v1_inspection_proto_msgTypes = make([]protoimpl.MessageInfo, 5)
+var file_admit_v1_inspection_proto_msgTypes = make([]protoimpl.MessageInfo, 9)
 var file_admit_v1_inspection_proto_goTypes = []any{
 	(*Begin)(nil),                 // 0: admit.v1.Begin
 	(*Temperature)(nil),           // 1: admit.v1.Temperature
 	(*Inspection)(nil),            // 2: admit.v1.Inspection
-	(*PartTypeReference)(nil),     // 3: admit.v1.PartTypeReference
-	(*CalibrationReference)(nil),  // 4: admit.v1.CalibrationReference
-	(Purpose)(0),                  // 5: admit.v1.Purpose
-	(*Unit)(nil),                  // 6: admit.v1.Unit
-	(*timestamppb.Timestamp)(nil), // 7: google.protobuf.Timestamp
-	(*Judgement)(nil),             // 8: admit.v1.Judgement
-	(*SweepHeader)(nil),           // 9: admit.v1.SweepHeader
+	(*Background)(nil),            // 3: admit.v1.Background
+	(*EarlierReading)(nil),        // 4: admit.v1.EarlierReading
+	(*LotMedian)(nil),             // 5: admit.v1.LotMedian
+	(*PreviousUnit)(nil),          // 6: admit.v1.PreviousUnit
+	(*PartTypeReference)(nil),     // 7: admit.v1.PartTypeReference
+	(*CalibrationReference)(nil),  // 8: admit.v1.CalibrationReference
+	(Purpose)(0),                  // 9: admit.v1.Purpose
+	(*Unit)(nil),                  // 10: admit.v1.Unit
+	(*timestamppb.Timestamp)(nil), // 11: google.protobuf.Timestamp
+	(*Judgement)(nil),             // 12: admit.v1.Judgement
+	(*SweepHeader)(nil),           // 13: admit.v1.SweepHeader
+	(*Where)(nil),                 // 14: admit.v1.Where
+	(*Estimate)(nil),              // 15: admit.v1.Estimate
 }
 var file_admit_v1_inspection_proto_depIdxs = []int32{
-	5,  // 0: admit.v1.Begin.purpose:type_name -> admit.v1.Purpose
-	6,  // 1: admit.v1.Begin.unit:type_name -> admit.v1.Unit
-	7,  // 2: admit.v1.Begin.measured_at:type_name -> google.protobuf.Timestamp
+	9,  // 0: admit.v1.Begin.purpose:type_name -> admit.v1.Purpose
+	10, // 1: admit.v1.Begin.unit:type_name -> admit.v1.Unit
+	11, // 2: admit.v1.Begin.measured_at:type_name -> google.protobuf.Timestamp
 	1,  // 3: admit.v1.Begin.temperature:type_name -> admit.v1.Temperature
-	8,  // 4: admit.v1.Begin.offline_judgement:type_name -> admit.v1.Judgement
-	7,  // 5: admit.v1.Inspection.recorded_at:type_name -> google.protobuf.Timestamp
+	12, // 4: admit.v1.Begin.offline_judgement:type_name -> admit.v1.Judgement
+	11, // 5: admit.v1.Inspection.recorded_at:type_name -> google.protobuf.Timestamp
 	0,  // 6: admit.v1.Inspection.begin:type_name -> admit.v1.Begin
-	3,  // 7: admit.v1.Inspection.part_type:type_name -> admit.v1.PartTypeReference
-	4,  // 8: admit.v1.Inspection.calibration:type_name -> admit.v1.CalibrationReference
-	9,  // 9: admit.v1.Inspection.sweeps:type_name -> admit.v1.SweepHeader
-	8,  // 10: admit.v1.Inspection.judgement:type_name -> admit.v1.Judgement
-	11, // [11:11] is the sub-list for method output_type
-	11, // [11:11] is the sub-list for method input_type
-	11, // [11:11] is the sub-list for extension type_name
-	11, // [11:11] is the sub-list for extension extendee
-	0,  // [0:11] is the sub-list for field type_name
+	7,  // 7: admit.v1.Inspection.part_type:type_name -> admit.v1.PartTypeReference
+	8,  // 8: admit.v1.Inspection.calibration:type_name -> admit.v1.CalibrationReference
+	13, // 9: admit.v1.Inspection.sweeps:type_name -> admit.v1.SweepHeader
+	12, // 10: admit.v1.Inspection.judgement:type_name -> admit.v1.Judgement
+	3,  // 11: admit.v1.Inspection.background:type_name -> admit.v1.Background
+	4,  // 12: admit.v1.Background.readings:type_name -> admit.v1.EarlierReading
+	5,  // 13: admit.v1.Background.lot:type_name -> admit.v1.LotMedian
+	6,  // 14: admit.v1.Background.previous:type_name -> admit.v1.PreviousUnit
+	14, // 15: admit.v1.EarlierReading.where:type_name -> admit.v1.Where
+	15, // 16: admit.v1.EarlierReading.mean:type_name -> admit.v1.Estimate
+	10, // 17: admit.v1.PreviousUnit.unit:type_name -> admit.v1.Unit
+	15, // 18: admit.v1.PreviousUnit.motional_resonance_hz:type_name -> admit.v1.Estimate
+	15, // 19: admit.v1.PreviousUnit.motional_resistance_ohm:type_name -> admit.v1.Estimate
+	15, // 20: admit.v1.PreviousUnit.motional_capacitance_f:type_name -> admit.v1.Estimate
+	15, // 21: admit.v1.PreviousUnit.shunt_capacitance_f:type_name -> admit.v1.Estimate
+	22, // [22:22] is the sub-list for method output_type
+	22, // [22:22] is the sub-list for method input_type
+	22, // [22:22] is the sub-list for extension type_name
+	22, // [22:22] is the sub-list for extension extendee
+	0,  // [0:22] is the sub-list for field type_name
 }
 
 func init() { file_admit_v1_inspection_proto_init() }
@@ -605,7 +978,7 @@ func file_admit_v1_inspection_proto_init() {
 			GoPackagePath: reflect.TypeOf(x{}).PkgPath(),
 			RawDescriptor: unsafe.Slice(unsafe.StringData(file_admit_v1_inspection_proto_rawDesc), len(file_admit_v1_inspection_proto_rawDesc)),
 			NumEnums:      0,
-			NumMessages:   5,
+			NumMessages:   9,
 			NumExtensions: 0,
 			NumServices:   0,
 		},

@@ -53,8 +53,16 @@ type Judgement struct {
 	Remarks []string `protobuf:"bytes,13,rep,name=remarks,proto3" json:"remarks,omitempty"`
 	// Revision of the program that judged.
 	SoftwareRevision string `protobuf:"bytes,14,opt,name=software_revision,json=softwareRevision,proto3" json:"software_revision,omitempty"`
-	unknownFields    protoimpl.UnknownFields
-	sizeCache        protoimpl.SizeCache
+	// What finally happens to the unit: passed | failed | set-aside. Empty: nothing yet, a retest before the last attempt, or an
+	// inspection that is none of production.
+	Disposition string `protobuf:"bytes,15,opt,name=disposition,proto3" json:"disposition,omitempty"`
+	// Shunt capacitance C0 away from all modes, farad. Absent: no sweep was taken there; main.shunt_capacitance_f is the
+	// apparent one in the window of the main mode, and another quantity.
+	ShuntCapacitanceAwayF *Estimate `protobuf:"bytes,16,opt,name=shunt_capacitance_away_f,json=shuntCapacitanceAwayF,proto3" json:"shunt_capacitance_away_f,omitempty"`
+	// On which overtone the main response lies. Absent where it cannot be told.
+	OvertoneOrder *OvertoneOrder `protobuf:"bytes,17,opt,name=overtone_order,json=overtoneOrder,proto3" json:"overtone_order,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
 }
 
 func (x *Judgement) Reset() {
@@ -185,6 +193,27 @@ func (x *Judgement) GetSoftwareRevision() string {
 	return ""
 }
 
+func (x *Judgement) GetDisposition() string {
+	if x != nil {
+		return x.Disposition
+	}
+	return ""
+}
+
+func (x *Judgement) GetShuntCapacitanceAwayF() *Estimate {
+	if x != nil {
+		return x.ShuntCapacitanceAwayF
+	}
+	return nil
+}
+
+func (x *Judgement) GetOvertoneOrder() *OvertoneOrder {
+	if x != nil {
+		return x.OvertoneOrder
+	}
+	return nil
+}
+
 // One limit held against one estimate.
 type Finding struct {
 	state protoimpl.MessageState `protogen:"open.v1"`
@@ -208,7 +237,12 @@ type Finding struct {
 	// conforms | violates | undecided | suspended.
 	Outcome string `protobuf:"bytes,9,opt,name=outcome,proto3" json:"outcome,omitempty"`
 	// The finding in words: what was measured, with expanded uncertainty (k = 2) and limit.
-	Text          string `protobuf:"bytes,10,opt,name=text,proto3" json:"text,omitempty"`
+	Text string `protobuf:"bytes,10,opt,name=text,proto3" json:"text,omitempty"`
+	// The part of standard_uncertainty that a further reading of the unit would share: all but noise and contact. Absent with
+	// the value.
+	CommonUncertainty *float64 `protobuf:"fixed64,11,opt,name=common_uncertainty,json=commonUncertainty,proto3,oneof" json:"common_uncertainty,omitempty"`
+	// Of how many readings (attempts) the value is the mean. 0 without a value.
+	Readings      uint32 `protobuf:"varint,12,opt,name=readings,proto3" json:"readings,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -311,6 +345,20 @@ func (x *Finding) GetText() string {
 		return x.Text
 	}
 	return ""
+}
+
+func (x *Finding) GetCommonUncertainty() float64 {
+	if x != nil && x.CommonUncertainty != nil {
+		return *x.CommonUncertainty
+	}
+	return 0
+}
+
+func (x *Finding) GetReadings() uint32 {
+	if x != nil {
+		return x.Readings
+	}
+	return 0
 }
 
 // Which of several limits, readings or windows is meant. Only what applies is set.
@@ -772,6 +820,9 @@ type ModeReading struct {
 	ResistanceOhm *Estimate `protobuf:"bytes,4,opt,name=resistance_ohm,json=resistanceOhm,proto3" json:"resistance_ohm,omitempty"`
 	// Suppression against the main mode by the part type's definition, dB.
 	SuppressionDb *Estimate `protobuf:"bytes,5,opt,name=suppression_db,json=suppressionDb,proto3" json:"suppression_db,omitempty"`
+	// Frequency of the overtone over that many times the fundamental, fn/(n f1); for the fundamental of an overtone unit that of
+	// the main response. Absent for other modes.
+	MultipleRatio *Estimate `protobuf:"bytes,6,opt,name=multiple_ratio,json=multipleRatio,proto3" json:"multiple_ratio,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -841,6 +892,233 @@ func (x *ModeReading) GetSuppressionDb() *Estimate {
 	return nil
 }
 
+func (x *ModeReading) GetMultipleRatio() *Estimate {
+	if x != nil {
+		return x.MultipleRatio
+	}
+	return nil
+}
+
+// On which overtone the main response lies: by the ratio of its capacitances, and by the responses at other multiples of one
+// fundamental.
+type OvertoneOrder struct {
+	state protoimpl.MessageState `protogen:"open.v1"`
+	// The most probable order, 1 for a fundamental.
+	Order uint32 `protobuf:"varint,1,opt,name=order,proto3" json:"order,omitempty"`
+	// Probability of that order, 0 to 1.
+	Probability float64 `protobuf:"fixed64,2,opt,name=probability,proto3" json:"probability,omitempty"`
+	// Every order that was thought of.
+	Candidates []*OvertoneCandidate `protobuf:"bytes,3,rep,name=candidates,proto3" json:"candidates,omitempty"`
+	// The responses of the unit, the main one first.
+	Responses []*OvertoneResponse `protobuf:"bytes,4,rep,name=responses,proto3" json:"responses,omitempty"`
+	// In words, with the reasons.
+	Text          string `protobuf:"bytes,5,opt,name=text,proto3" json:"text,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *OvertoneOrder) Reset() {
+	*x = OvertoneOrder{}
+	mi := &file_admit_v1_judgement_proto_msgTypes[8]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *OvertoneOrder) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*OvertoneOrder) ProtoMessage() {}
+
+func (x *OvertoneOrder) ProtoReflect() protoreflect.Message {
+	mi := &file_admit_v1_judgement_proto_msgTypes[8]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use OvertoneOrder.ProtoReflect.Descriptor instead.
+func (*OvertoneOrder) Descriptor() ([]byte, []int) {
+	return file_admit_v1_judgement_proto_rawDescGZIP(), []int{8}
+}
+
+func (x *OvertoneOrder) GetOrder() uint32 {
+	if x != nil {
+		return x.Order
+	}
+	return 0
+}
+
+func (x *OvertoneOrder) GetProbability() float64 {
+	if x != nil {
+		return x.Probability
+	}
+	return 0
+}
+
+func (x *OvertoneOrder) GetCandidates() []*OvertoneCandidate {
+	if x != nil {
+		return x.Candidates
+	}
+	return nil
+}
+
+func (x *OvertoneOrder) GetResponses() []*OvertoneResponse {
+	if x != nil {
+		return x.Responses
+	}
+	return nil
+}
+
+func (x *OvertoneOrder) GetText() string {
+	if x != nil {
+		return x.Text
+	}
+	return ""
+}
+
+// One overtone order that may be.
+type OvertoneCandidate struct {
+	state protoimpl.MessageState `protogen:"open.v1"`
+	// Order.
+	Order uint32 `protobuf:"varint,1,opt,name=order,proto3" json:"order,omitempty"`
+	// Probability, 0 to 1; those of all candidates add up to 1.
+	Probability   float64 `protobuf:"fixed64,2,opt,name=probability,proto3" json:"probability,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
+}
+
+func (x *OvertoneCandidate) Reset() {
+	*x = OvertoneCandidate{}
+	mi := &file_admit_v1_judgement_proto_msgTypes[9]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *OvertoneCandidate) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*OvertoneCandidate) ProtoMessage() {}
+
+func (x *OvertoneCandidate) ProtoReflect() protoreflect.Message {
+	mi := &file_admit_v1_judgement_proto_msgTypes[9]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use OvertoneCandidate.ProtoReflect.Descriptor instead.
+func (*OvertoneCandidate) Descriptor() ([]byte, []int) {
+	return file_admit_v1_judgement_proto_rawDescGZIP(), []int{9}
+}
+
+func (x *OvertoneCandidate) GetOrder() uint32 {
+	if x != nil {
+		return x.Order
+	}
+	return 0
+}
+
+func (x *OvertoneCandidate) GetProbability() float64 {
+	if x != nil {
+		return x.Probability
+	}
+	return 0
+}
+
+// One response of the unit with its order.
+type OvertoneResponse struct {
+	state protoimpl.MessageState `protogen:"open.v1"`
+	// Order that goes with the most probable one of the main response.
+	Order uint32 `protobuf:"varint,1,opt,name=order,proto3" json:"order,omitempty"`
+	// Motional resonance frequency, Hz.
+	FrequencyHz *Estimate `protobuf:"bytes,2,opt,name=frequency_hz,json=frequencyHz,proto3" json:"frequency_hz,omitempty"`
+	// Frequency over as many times that of the lowest order m measured, fn m/(n fm). Absent for the lowest itself.
+	MultipleRatio *Estimate `protobuf:"bytes,3,opt,name=multiple_ratio,json=multipleRatio,proto3" json:"multiple_ratio,omitempty"`
+	// Motional capacitance Cn, farad. Absent where ohms are not known.
+	CapacitanceF *Estimate `protobuf:"bytes,4,opt,name=capacitance_f,json=capacitanceF,proto3" json:"capacitance_f,omitempty"`
+	// n^2 Cn over m^2 Cm of the lowest order m measured; 1 for an ideal plate. Absent for the lowest itself.
+	CapacitanceShare *Estimate `protobuf:"bytes,5,opt,name=capacitance_share,json=capacitanceShare,proto3" json:"capacitance_share,omitempty"`
+	unknownFields    protoimpl.UnknownFields
+	sizeCache        protoimpl.SizeCache
+}
+
+func (x *OvertoneResponse) Reset() {
+	*x = OvertoneResponse{}
+	mi := &file_admit_v1_judgement_proto_msgTypes[10]
+	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+	ms.StoreMessageInfo(mi)
+}
+
+func (x *OvertoneResponse) String() string {
+	return protoimpl.X.MessageStringOf(x)
+}
+
+func (*OvertoneResponse) ProtoMessage() {}
+
+func (x *OvertoneResponse) ProtoReflect() protoreflect.Message {
+	mi := &file_admit_v1_judgement_proto_msgTypes[10]
+	if x != nil {
+		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
+		if ms.LoadMessageInfo() == nil {
+			ms.StoreMessageInfo(mi)
+		}
+		return ms
+	}
+	return mi.MessageOf(x)
+}
+
+// Deprecated: Use OvertoneResponse.ProtoReflect.Descriptor instead.
+func (*OvertoneResponse) Descriptor() ([]byte, []int) {
+	return file_admit_v1_judgement_proto_rawDescGZIP(), []int{10}
+}
+
+func (x *OvertoneResponse) GetOrder() uint32 {
+	if x != nil {
+		return x.Order
+	}
+	return 0
+}
+
+func (x *OvertoneResponse) GetFrequencyHz() *Estimate {
+	if x != nil {
+		return x.FrequencyHz
+	}
+	return nil
+}
+
+func (x *OvertoneResponse) GetMultipleRatio() *Estimate {
+	if x != nil {
+		return x.MultipleRatio
+	}
+	return nil
+}
+
+func (x *OvertoneResponse) GetCapacitanceF() *Estimate {
+	if x != nil {
+		return x.CapacitanceF
+	}
+	return nil
+}
+
+func (x *OvertoneResponse) GetCapacitanceShare() *Estimate {
+	if x != nil {
+		return x.CapacitanceShare
+	}
+	return nil
+}
+
 // What a survey could not have seen: between from_hz and to_hz a mode narrower than narrowest_width_hz may have been missed,
 // even if it was suppressed by less than suppression_db.
 type Observability struct {
@@ -859,7 +1137,7 @@ type Observability struct {
 
 func (x *Observability) Reset() {
 	*x = Observability{}
-	mi := &file_admit_v1_judgement_proto_msgTypes[8]
+	mi := &file_admit_v1_judgement_proto_msgTypes[11]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -871,7 +1149,7 @@ func (x *Observability) String() string {
 func (*Observability) ProtoMessage() {}
 
 func (x *Observability) ProtoReflect() protoreflect.Message {
-	mi := &file_admit_v1_judgement_proto_msgTypes[8]
+	mi := &file_admit_v1_judgement_proto_msgTypes[11]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -884,7 +1162,7 @@ func (x *Observability) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use Observability.ProtoReflect.Descriptor instead.
 func (*Observability) Descriptor() ([]byte, []int) {
-	return file_admit_v1_judgement_proto_rawDescGZIP(), []int{8}
+	return file_admit_v1_judgement_proto_rawDescGZIP(), []int{11}
 }
 
 func (x *Observability) GetFromHz() float64 {
@@ -932,7 +1210,7 @@ type SweepQuality struct {
 
 func (x *SweepQuality) Reset() {
 	*x = SweepQuality{}
-	mi := &file_admit_v1_judgement_proto_msgTypes[9]
+	mi := &file_admit_v1_judgement_proto_msgTypes[12]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -944,7 +1222,7 @@ func (x *SweepQuality) String() string {
 func (*SweepQuality) ProtoMessage() {}
 
 func (x *SweepQuality) ProtoReflect() protoreflect.Message {
-	mi := &file_admit_v1_judgement_proto_msgTypes[9]
+	mi := &file_admit_v1_judgement_proto_msgTypes[12]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -957,7 +1235,7 @@ func (x *SweepQuality) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use SweepQuality.ProtoReflect.Descriptor instead.
 func (*SweepQuality) Descriptor() ([]byte, []int) {
-	return file_admit_v1_judgement_proto_rawDescGZIP(), []int{9}
+	return file_admit_v1_judgement_proto_rawDescGZIP(), []int{12}
 }
 
 func (x *SweepQuality) GetSnrDb() float64 {
@@ -1007,7 +1285,7 @@ type BudgetLine struct {
 
 func (x *BudgetLine) Reset() {
 	*x = BudgetLine{}
-	mi := &file_admit_v1_judgement_proto_msgTypes[10]
+	mi := &file_admit_v1_judgement_proto_msgTypes[13]
 	ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 	ms.StoreMessageInfo(mi)
 }
@@ -1019,7 +1297,7 @@ func (x *BudgetLine) String() string {
 func (*BudgetLine) ProtoMessage() {}
 
 func (x *BudgetLine) ProtoReflect() protoreflect.Message {
-	mi := &file_admit_v1_judgement_proto_msgTypes[10]
+	mi := &file_admit_v1_judgement_proto_msgTypes[13]
 	if x != nil {
 		ms := protoimpl.X.MessageStateOf(protoimpl.Pointer(x))
 		if ms.LoadMessageInfo() == nil {
@@ -1032,7 +1310,7 @@ func (x *BudgetLine) ProtoReflect() protoreflect.Message {
 
 // Deprecated: Use BudgetLine.ProtoReflect.Descriptor instead.
 func (*BudgetLine) Descriptor() ([]byte, []int) {
-	return file_admit_v1_judgement_proto_rawDescGZIP(), []int{10}
+	return file_admit_v1_judgement_proto_rawDescGZIP(), []int{13}
 }
 
 func (x *BudgetLine) GetSource() string {
@@ -1074,7 +1352,7 @@ var File_admit_v1_judgement_proto protoreflect.FileDescriptor
 
 const file_admit_v1_judgement_proto_rawDesc = "" +
 	"\n" +
-	"\x18admit/v1/judgement.proto\x12\badmit.v1\x1a\x15admit/v1/common.proto\"\xff\x04\n" +
+	"\x18admit/v1/judgement.proto\x12\badmit.v1\x1a\x15admit/v1/common.proto\"\xae\x06\n" +
 	"\tJudgement\x12+\n" +
 	"\averdict\x18\x01 \x01(\x0e2\x11.admit.v1.VerdictR\averdict\x12\x14\n" +
 	"\x05grade\x18\x02 \x01(\tR\x05grade\x12-\n" +
@@ -1090,7 +1368,10 @@ const file_admit_v1_judgement_proto_rawDesc = "" +
 	"\x06budget\x18\v \x03(\v2\x14.admit.v1.BudgetLineR\x06budget\x12#\n" +
 	"\rscale_unknown\x18\f \x01(\bR\fscaleUnknown\x12\x18\n" +
 	"\aremarks\x18\r \x03(\tR\aremarks\x12+\n" +
-	"\x11software_revision\x18\x0e \x01(\tR\x10softwareRevision\"\xa8\x03\n" +
+	"\x11software_revision\x18\x0e \x01(\tR\x10softwareRevision\x12 \n" +
+	"\vdisposition\x18\x0f \x01(\tR\vdisposition\x12K\n" +
+	"\x18shunt_capacitance_away_f\x18\x10 \x01(\v2\x12.admit.v1.EstimateR\x15shuntCapacitanceAwayF\x12>\n" +
+	"\x0eovertone_order\x18\x11 \x01(\v2\x17.admit.v1.OvertoneOrderR\rovertoneOrder\"\x8f\x04\n" +
 	"\aFinding\x12\x1a\n" +
 	"\bquantity\x18\x01 \x01(\tR\bquantity\x12%\n" +
 	"\x05where\x18\x02 \x01(\v2\x0f.admit.v1.WhereR\x05where\x12\x19\n" +
@@ -1102,12 +1383,15 @@ const file_admit_v1_judgement_proto_rawDesc = "" +
 	"\x17conformance_probability\x18\b \x01(\x01H\x04R\x16conformanceProbability\x88\x01\x01\x12\x18\n" +
 	"\aoutcome\x18\t \x01(\tR\aoutcome\x12\x12\n" +
 	"\x04text\x18\n" +
-	" \x01(\tR\x04textB\b\n" +
+	" \x01(\tR\x04text\x122\n" +
+	"\x12common_uncertainty\x18\v \x01(\x01H\x05R\x11commonUncertainty\x88\x01\x01\x12\x1a\n" +
+	"\breadings\x18\f \x01(\rR\breadingsB\b\n" +
 	"\x06_valueB\x17\n" +
 	"\x15_standard_uncertaintyB\b\n" +
 	"\x06_lowerB\b\n" +
 	"\x06_upperB\x1a\n" +
-	"\x18_conformance_probability\"\xef\x01\n" +
+	"\x18_conformance_probabilityB\x15\n" +
+	"\x13_common_uncertainty\"\xef\x01\n" +
 	"\x05Where\x12\"\n" +
 	"\n" +
 	"drive_step\x18\x01 \x01(\rH\x00R\tdriveStep\x88\x01\x01\x12\x19\n" +
@@ -1151,14 +1435,32 @@ const file_admit_v1_judgement_proto_rawDesc = "" +
 	"\x04step\x18\x01 \x01(\rR\x04step\x12+\n" +
 	"\apower_w\x18\x02 \x01(\v2\x12.admit.v1.EstimateR\x06powerW\x12J\n" +
 	"\x17motional_resistance_ohm\x18\x03 \x01(\v2\x12.admit.v1.EstimateR\x15motionalResistanceOhm\x12F\n" +
-	"\x15motional_resonance_hz\x18\x04 \x01(\v2\x12.admit.v1.EstimateR\x13motionalResonanceHz\"\xf3\x01\n" +
+	"\x15motional_resonance_hz\x18\x04 \x01(\v2\x12.admit.v1.EstimateR\x13motionalResonanceHz\"\xae\x02\n" +
 	"\vModeReading\x12\x12\n" +
 	"\x04kind\x18\x01 \x01(\tR\x04kind\x12\x19\n" +
 	"\x05order\x18\x02 \x01(\rH\x00R\x05order\x88\x01\x01\x125\n" +
 	"\ffrequency_hz\x18\x03 \x01(\v2\x12.admit.v1.EstimateR\vfrequencyHz\x129\n" +
 	"\x0eresistance_ohm\x18\x04 \x01(\v2\x12.admit.v1.EstimateR\rresistanceOhm\x129\n" +
-	"\x0esuppression_db\x18\x05 \x01(\v2\x12.admit.v1.EstimateR\rsuppressionDbB\b\n" +
-	"\x06_order\"\x92\x01\n" +
+	"\x0esuppression_db\x18\x05 \x01(\v2\x12.admit.v1.EstimateR\rsuppressionDb\x129\n" +
+	"\x0emultiple_ratio\x18\x06 \x01(\v2\x12.admit.v1.EstimateR\rmultipleRatioB\b\n" +
+	"\x06_order\"\xd2\x01\n" +
+	"\rOvertoneOrder\x12\x14\n" +
+	"\x05order\x18\x01 \x01(\rR\x05order\x12 \n" +
+	"\vprobability\x18\x02 \x01(\x01R\vprobability\x12;\n" +
+	"\n" +
+	"candidates\x18\x03 \x03(\v2\x1b.admit.v1.OvertoneCandidateR\n" +
+	"candidates\x128\n" +
+	"\tresponses\x18\x04 \x03(\v2\x1a.admit.v1.OvertoneResponseR\tresponses\x12\x12\n" +
+	"\x04text\x18\x05 \x01(\tR\x04text\"K\n" +
+	"\x11OvertoneCandidate\x12\x14\n" +
+	"\x05order\x18\x01 \x01(\rR\x05order\x12 \n" +
+	"\vprobability\x18\x02 \x01(\x01R\vprobability\"\x94\x02\n" +
+	"\x10OvertoneResponse\x12\x14\n" +
+	"\x05order\x18\x01 \x01(\rR\x05order\x125\n" +
+	"\ffrequency_hz\x18\x02 \x01(\v2\x12.admit.v1.EstimateR\vfrequencyHz\x129\n" +
+	"\x0emultiple_ratio\x18\x03 \x01(\v2\x12.admit.v1.EstimateR\rmultipleRatio\x127\n" +
+	"\rcapacitance_f\x18\x04 \x01(\v2\x12.admit.v1.EstimateR\fcapacitanceF\x12?\n" +
+	"\x11capacitance_share\x18\x05 \x01(\v2\x12.admit.v1.EstimateR\x10capacitanceShare\"\x92\x01\n" +
 	"\rObservability\x12\x17\n" +
 	"\afrom_hz\x18\x01 \x01(\x01R\x06fromHz\x12\x13\n" +
 	"\x05to_hz\x18\x02 \x01(\x01R\x04toHz\x12,\n" +
@@ -1190,7 +1492,7 @@ func file_admit_v1_judgement_proto_rawDescGZIP() []byte {
 	return file_admit_v1_judgement_proto_rawDescData
 }
 
-var file_admit_v1_judgement_proto_msgTypes = make([]protoimpl.MessageInfo, 11)
+var file_admit_v1_judgement_proto_msgTypes = make([]protoimpl.MessageInfo, 14)
 var file_admit_v1_judgement_proto_goTypes = []any{
 	(*Judgement)(nil),          // 0: admit.v1.Judgement
 	(*Finding)(nil),            // 1: admit.v1.Finding
@@ -1200,49 +1502,61 @@ var file_admit_v1_judgement_proto_goTypes = []any{
 	(*LoadParameters)(nil),     // 5: admit.v1.LoadParameters
 	(*DriveReading)(nil),       // 6: admit.v1.DriveReading
 	(*ModeReading)(nil),        // 7: admit.v1.ModeReading
-	(*Observability)(nil),      // 8: admit.v1.Observability
-	(*SweepQuality)(nil),       // 9: admit.v1.SweepQuality
-	(*BudgetLine)(nil),         // 10: admit.v1.BudgetLine
-	(Verdict)(0),               // 11: admit.v1.Verdict
-	(*Estimate)(nil),           // 12: admit.v1.Estimate
+	(*OvertoneOrder)(nil),      // 8: admit.v1.OvertoneOrder
+	(*OvertoneCandidate)(nil),  // 9: admit.v1.OvertoneCandidate
+	(*OvertoneResponse)(nil),   // 10: admit.v1.OvertoneResponse
+	(*Observability)(nil),      // 11: admit.v1.Observability
+	(*SweepQuality)(nil),       // 12: admit.v1.SweepQuality
+	(*BudgetLine)(nil),         // 13: admit.v1.BudgetLine
+	(Verdict)(0),               // 14: admit.v1.Verdict
+	(*Estimate)(nil),           // 15: admit.v1.Estimate
 }
 var file_admit_v1_judgement_proto_depIdxs = []int32{
-	11, // 0: admit.v1.Judgement.verdict:type_name -> admit.v1.Verdict
+	14, // 0: admit.v1.Judgement.verdict:type_name -> admit.v1.Verdict
 	1,  // 1: admit.v1.Judgement.findings:type_name -> admit.v1.Finding
 	3,  // 2: admit.v1.Judgement.retest_causes:type_name -> admit.v1.RetestCause
 	4,  // 3: admit.v1.Judgement.main:type_name -> admit.v1.MotionalParameters
 	5,  // 4: admit.v1.Judgement.load:type_name -> admit.v1.LoadParameters
 	6,  // 5: admit.v1.Judgement.drive:type_name -> admit.v1.DriveReading
 	7,  // 6: admit.v1.Judgement.modes:type_name -> admit.v1.ModeReading
-	8,  // 7: admit.v1.Judgement.observability:type_name -> admit.v1.Observability
-	9,  // 8: admit.v1.Judgement.quality:type_name -> admit.v1.SweepQuality
-	10, // 9: admit.v1.Judgement.budget:type_name -> admit.v1.BudgetLine
-	2,  // 10: admit.v1.Finding.where:type_name -> admit.v1.Where
-	12, // 11: admit.v1.MotionalParameters.motional_resonance_hz:type_name -> admit.v1.Estimate
-	12, // 12: admit.v1.MotionalParameters.resonance_hz:type_name -> admit.v1.Estimate
-	12, // 13: admit.v1.MotionalParameters.antiresonance_hz:type_name -> admit.v1.Estimate
-	12, // 14: admit.v1.MotionalParameters.parallel_resonance_hz:type_name -> admit.v1.Estimate
-	12, // 15: admit.v1.MotionalParameters.motional_resistance_ohm:type_name -> admit.v1.Estimate
-	12, // 16: admit.v1.MotionalParameters.resonance_resistance_ohm:type_name -> admit.v1.Estimate
-	12, // 17: admit.v1.MotionalParameters.motional_inductance_h:type_name -> admit.v1.Estimate
-	12, // 18: admit.v1.MotionalParameters.motional_capacitance_f:type_name -> admit.v1.Estimate
-	12, // 19: admit.v1.MotionalParameters.shunt_capacitance_f:type_name -> admit.v1.Estimate
-	12, // 20: admit.v1.MotionalParameters.quality_factor:type_name -> admit.v1.Estimate
-	12, // 21: admit.v1.MotionalParameters.figure_of_merit:type_name -> admit.v1.Estimate
-	12, // 22: admit.v1.LoadParameters.load_resonance_hz:type_name -> admit.v1.Estimate
-	12, // 23: admit.v1.LoadParameters.load_resonance_resistance_ohm:type_name -> admit.v1.Estimate
-	12, // 24: admit.v1.LoadParameters.pulling_sensitivity_ppm_per_pf:type_name -> admit.v1.Estimate
-	12, // 25: admit.v1.DriveReading.power_w:type_name -> admit.v1.Estimate
-	12, // 26: admit.v1.DriveReading.motional_resistance_ohm:type_name -> admit.v1.Estimate
-	12, // 27: admit.v1.DriveReading.motional_resonance_hz:type_name -> admit.v1.Estimate
-	12, // 28: admit.v1.ModeReading.frequency_hz:type_name -> admit.v1.Estimate
-	12, // 29: admit.v1.ModeReading.resistance_ohm:type_name -> admit.v1.Estimate
-	12, // 30: admit.v1.ModeReading.suppression_db:type_name -> admit.v1.Estimate
-	31, // [31:31] is the sub-list for method output_type
-	31, // [31:31] is the sub-list for method input_type
-	31, // [31:31] is the sub-list for extension type_name
-	31, // [31:31] is the sub-list for extension extendee
-	0,  // [0:31] is the sub-list for field type_name
+	11, // 7: admit.v1.Judgement.observability:type_name -> admit.v1.Observability
+	12, // 8: admit.v1.Judgement.quality:type_name -> admit.v1.SweepQuality
+	13, // 9: admit.v1.Judgement.budget:type_name -> admit.v1.BudgetLine
+	15, // 10: admit.v1.Judgement.shunt_capacitance_away_f:type_name -> admit.v1.Estimate
+	8,  // 11: admit.v1.Judgement.overtone_order:type_name -> admit.v1.OvertoneOrder
+	2,  // 12: admit.v1.Finding.where:type_name -> admit.v1.Where
+	15, // 13: admit.v1.MotionalParameters.motional_resonance_hz:type_name -> admit.v1.Estimate
+	15, // 14: admit.v1.MotionalParameters.resonance_hz:type_name -> admit.v1.Estimate
+	15, // 15: admit.v1.MotionalParameters.antiresonance_hz:type_name -> admit.v1.Estimate
+	15, // 16: admit.v1.MotionalParameters.parallel_resonance_hz:type_name -> admit.v1.Estimate
+	15, // 17: admit.v1.MotionalParameters.motional_resistance_ohm:type_name -> admit.v1.Estimate
+	15, // 18: admit.v1.MotionalParameters.resonance_resistance_ohm:type_name -> admit.v1.Estimate
+	15, // 19: admit.v1.MotionalParameters.motional_inductance_h:type_name -> admit.v1.Estimate
+	15, // 20: admit.v1.MotionalParameters.motional_capacitance_f:type_name -> admit.v1.Estimate
+	15, // 21: admit.v1.MotionalParameters.shunt_capacitance_f:type_name -> admit.v1.Estimate
+	15, // 22: admit.v1.MotionalParameters.quality_factor:type_name -> admit.v1.Estimate
+	15, // 23: admit.v1.MotionalParameters.figure_of_merit:type_name -> admit.v1.Estimate
+	15, // 24: admit.v1.LoadParameters.load_resonance_hz:type_name -> admit.v1.Estimate
+	15, // 25: admit.v1.LoadParameters.load_resonance_resistance_ohm:type_name -> admit.v1.Estimate
+	15, // 26: admit.v1.LoadParameters.pulling_sensitivity_ppm_per_pf:type_name -> admit.v1.Estimate
+	15, // 27: admit.v1.DriveReading.power_w:type_name -> admit.v1.Estimate
+	15, // 28: admit.v1.DriveReading.motional_resistance_ohm:type_name -> admit.v1.Estimate
+	15, // 29: admit.v1.DriveReading.motional_resonance_hz:type_name -> admit.v1.Estimate
+	15, // 30: admit.v1.ModeReading.frequency_hz:type_name -> admit.v1.Estimate
+	15, // 31: admit.v1.ModeReading.resistance_ohm:type_name -> admit.v1.Estimate
+	15, // 32: admit.v1.ModeReading.suppression_db:type_name -> admit.v1.Estimate
+	15, // 33: admit.v1.ModeReading.multiple_ratio:type_name -> admit.v1.Estimate
+	9,  // 34: admit.v1.OvertoneOrder.candidates:type_name -> admit.v1.OvertoneCandidate
+	10, // 35: admit.v1.OvertoneOrder.responses:type_name -> admit.v1.OvertoneResponse
+	15, // 36: admit.v1.OvertoneResponse.frequency_hz:type_name -> admit.v1.Estimate
+	15, // 37: admit.v1.OvertoneResponse.multiple_ratio:type_name -> admit.v1.Estimate
+	15, // 38: admit.v1.OvertoneResponse.capacitance_f:type_name -> admit.v1.Estimate
+	15, // 39: admit.v1.OvertoneResponse.capacitance_share:type_name -> admit.v1.Estimate
+	40, // [40:40] is the sub-list for method output_type
+	40, // [40:40] is the sub-list for method input_type
+	40, // [40:40] is the sub-list for extension type_name
+	40, // [40:40] is the sub-list for extension extendee
+	0,  // [0:40] is the sub-list for field type_name
 }
 
 func init() { file_admit_v1_judgement_proto_init() }
@@ -1254,14 +1568,14 @@ func file_admit_v1_judgement_proto_init() {
 	file_admit_v1_judgement_proto_msgTypes[1].OneofWrappers = []any{}
 	file_admit_v1_judgement_proto_msgTypes[2].OneofWrappers = []any{}
 	file_admit_v1_judgement_proto_msgTypes[7].OneofWrappers = []any{}
-	file_admit_v1_judgement_proto_msgTypes[9].OneofWrappers = []any{}
+	file_admit_v1_judgement_proto_msgTypes[12].OneofWrappers = []any{}
 	type x struct{}
 	out := protoimpl.TypeBuilder{
 		File: protoimpl.DescBuilder{
 			GoPackagePath: reflect.TypeOf(x{}).PkgPath(),
 			RawDescriptor: unsafe.Slice(unsafe.StringData(file_admit_v1_judgement_proto_rawDesc), len(file_admit_v1_judgement_proto_rawDesc)),
 			NumEnums:      0,
-			NumMessages:   11,
+			NumMessages:   14,
 			NumExtensions: 0,
 			NumServices:   0,
 		},

@@ -151,7 +151,9 @@ type JudgeContext struct {
 	// The limits file (YAML), at most 128 KiB.
 	LimitsFile []byte `protobuf:"bytes,2,opt,name=limits_file,json=limitsFile,proto3" json:"limits_file,omitempty"`
 	// The calibration, its standards without samples. Absent: the nominal network where the part type allows it.
-	Calibration   *Calibration `protobuf:"bytes,3,opt,name=calibration,proto3" json:"calibration,omitempty"`
+	Calibration *Calibration `protobuf:"bytes,3,opt,name=calibration,proto3" json:"calibration,omitempty"`
+	// What earlier inspections of the unit, its lot and its station tell. Absent: nothing.
+	Background    *Background `protobuf:"bytes,4,opt,name=background,proto3" json:"background,omitempty"`
 	unknownFields protoimpl.UnknownFields
 	sizeCache     protoimpl.SizeCache
 }
@@ -203,6 +205,13 @@ func (x *JudgeContext) GetLimitsFile() []byte {
 func (x *JudgeContext) GetCalibration() *Calibration {
 	if x != nil {
 		return x.Calibration
+	}
+	return nil
+}
+
+func (x *JudgeContext) GetBackground() *Background {
+	if x != nil {
+		return x.Background
 	}
 	return nil
 }
@@ -263,12 +272,15 @@ const file_admit_v1_judgement_service_proto_rawDesc = "" +
 	"\x10standard_samples\x18\x02 \x01(\v2\x19.admit.v1.StandardSamplesH\x00R\x0fstandardSamples\x12/\n" +
 	"\x06header\x18\x03 \x01(\v2\x15.admit.v1.SweepHeaderH\x00R\x06header\x122\n" +
 	"\asamples\x18\x04 \x01(\v2\x16.admit.v1.SweepSamplesH\x00R\asamplesB\t\n" +
-	"\amessage\"\x8f\x01\n" +
+	"\amessage\"\xc5\x01\n" +
 	"\fJudgeContext\x12%\n" +
 	"\x05begin\x18\x01 \x01(\v2\x0f.admit.v1.BeginR\x05begin\x12\x1f\n" +
 	"\vlimits_file\x18\x02 \x01(\fR\n" +
 	"limitsFile\x127\n" +
-	"\vcalibration\x18\x03 \x01(\v2\x15.admit.v1.CalibrationR\vcalibration\"B\n" +
+	"\vcalibration\x18\x03 \x01(\v2\x15.admit.v1.CalibrationR\vcalibration\x124\n" +
+	"\n" +
+	"background\x18\x04 \x01(\v2\x14.admit.v1.BackgroundR\n" +
+	"background\"B\n" +
 	"\rJudgeResponse\x121\n" +
 	"\tjudgement\x18\x01 \x01(\v2\x13.admit.v1.JudgementR\tjudgement2N\n" +
 	"\x10JudgementService\x12:\n" +
@@ -296,7 +308,8 @@ var file_admit_v1_judgement_service_proto_goTypes = []any{
 	(*SweepSamples)(nil),    // 5: admit.v1.SweepSamples
 	(*Begin)(nil),           // 6: admit.v1.Begin
 	(*Calibration)(nil),     // 7: admit.v1.Calibration
-	(*Judgement)(nil),       // 8: admit.v1.Judgement
+	(*Background)(nil),      // 8: admit.v1.Background
+	(*Judgement)(nil),       // 9: admit.v1.Judgement
 }
 var file_admit_v1_judgement_service_proto_depIdxs = []int32{
 	1, // 0: admit.v1.JudgeRequest.context:type_name -> admit.v1.JudgeContext
@@ -305,14 +318,15 @@ var file_admit_v1_judgement_service_proto_depIdxs = []int32{
 	5, // 3: admit.v1.JudgeRequest.samples:type_name -> admit.v1.SweepSamples
 	6, // 4: admit.v1.JudgeContext.begin:type_name -> admit.v1.Begin
 	7, // 5: admit.v1.JudgeContext.calibration:type_name -> admit.v1.Calibration
-	8, // 6: admit.v1.JudgeResponse.judgement:type_name -> admit.v1.Judgement
-	0, // 7: admit.v1.JudgementService.Judge:input_type -> admit.v1.JudgeRequest
-	2, // 8: admit.v1.JudgementService.Judge:output_type -> admit.v1.JudgeResponse
-	8, // [8:9] is the sub-list for method output_type
-	7, // [7:8] is the sub-list for method input_type
-	7, // [7:7] is the sub-list for extension type_name
-	7, // [7:7] is the sub-list for extension extendee
-	0, // [0:7] is the sub-list for field type_name
+	8, // 6: admit.v1.JudgeContext.background:type_name -> admit.v1.Background
+	9, // 7: admit.v1.JudgeResponse.judgement:type_name -> admit.v1.Judgement
+	0, // 8: admit.v1.JudgementService.Judge:input_type -> admit.v1.JudgeRequest
+	2, // 9: admit.v1.JudgementService.Judge:output_type -> admit.v1.JudgeResponse
+	9, // [9:10] is the sub-list for method output_type
+	8, // [8:9] is the sub-list for method input_type
+	8, // [8:8] is the sub-list for extension type_name
+	8, // [8:8] is the sub-list for extension extendee
+	0, // [0:8] is the sub-list for field type_name
 }
 
 func init() { file_admit_v1_judgement_service_proto_init() }

@@ -11,15 +11,17 @@ import (
 	"net"
 	"os"
 	"slices"
+	"strconv"
 	"strings"
 	"time"
 
 	"go.yaml.in/yaml/v3"
 
 	"example.com/admit/service/network"
+	"example.com/admit/service/rpc"
 )
 
-// Config is the server's configuration. The yaml keys are the reference; README.md explains them to the person who installs it.
+// Config is the server's configuration. The yaml keys are the reference; testdata/good/plant.yaml is a whole example.
 type Config struct {
 	// Store is the folder of the store. It must lie on a local disk.
 	Store string `yaml:"store"`
@@ -50,9 +52,9 @@ type TLS struct {
 
 // Caller is one name in a client certificate's subject alternative names, with what it may do and which stations it may speak for.
 type Caller struct {
-	Name       string   `yaml:"name"`
-	Permission string   `yaml:"permission"`
-	Stations   []string `yaml:"stations"`
+	Name        string   `yaml:"name"`
+	Permissions []string `yaml:"permissions"`
+	Stations    []string `yaml:"stations"`
 }
 
 // Station is one test position.
@@ -86,39 +88,74 @@ func Default() Config {
 	}
 }
 
-// Permissions that a caller can be given, in the order of what they may do.
-var permissions = []string{"fixture", "operator", "supervisor", "engineer", "administrator", "metrics"}
+// permissions that a caller can be given; the server's table of methods (service/rpc) says what each of them opens.
+var permissions = names(rpc.Permissions())
 
-// Parse reads a configuration file over the defaults. Name stands in messages.
-func Parse(name string, source []byte) (Config, error) {
-	c := Default()
-	d := yaml.NewDecoder(bytes.NewReader(source))
-	d.KnownFields(true)
-	if err := d.Decode(&c); err != nil && !errors.Is(err, io.EOF) {
-		return c, fmt.Errorf("%s: %w", name, err)
+func names(all []rpc.Permission) []string {
+	out := make([]string, len(all))
+	for i, p := range all {
+		out[i] = string(p)
 	}
-	if err := c.Check(); err != nil {
-		return c, fmt.Errorf("%s: %w", name, err)
-	}
-	return c, nil
+	return out
 }
 
-// Load reads a file if a path is given, then the environment.
-func Load(path string, environ []string) (Config, error) {
+// Load reads a file if a path is given, then the environment, then applies override (flags; may be nil), and checks the whole. Every fault
+// of all of these comes back at once.
+func Load(path string, environ []string, override func(*Config)) (Config, error) {
 	c := Default()
+	var faults []error
 	if path != "" {
 		source, err := os.ReadFile(path)
 		if err != nil {
 			return c, err
 		}
-		if c, err = Parse(path, source); err != nil {
-			return c, err
+		if err := c.decode(path, source); err != nil {
+			faults = append(faults, err)
 		}
 	}
 	if err := c.environment(environ); err != nil {
-		return c, err
+		faults = append(faults, err)
 	}
-	return c, c.Check()
+	if override != nil {
+		override(&c)
+	}
+	if err := c.Check(); err != nil {
+		faults = append(faults, err)
+	}
+	return c, errors.Join(faults...)
+}
+
+// decode reads a configuration file over what is there. What is good of it is taken even when something is not.
+func (c *Config) decode(name string, source []byte) error {
+	d := yaml.NewDecoder(bytes.NewReader(source))
+	d.KnownFields(true)
+	err := d.Decode(c)
+	var list *yaml.TypeError
+	switch {
+	case errors.Is(err, io.EOF): // an empty file: everything at its default
+		return nil
+	case errors.As(err, &list):
+		var faults []error
+		for _, text := range list.Errors {
+			faults = append(faults, fmt.Errorf("%s: %s", name, inWords(text)))
+		}
+		return errors.Join(faults...)
+	case err != nil:
+		return fmt.Errorf("%s: %w", name, err)
+	}
+	if d.Decode(new(yaml.Node)) != io.EOF {
+		return fmt.Errorf("%s: want one YAML document, got another behind it", name)
+	}
+	return nil
+}
+
+// inWords takes the names of our types out of the library's message about an unknown key.
+func inWords(text string) string {
+	before, _, found := strings.Cut(text, " not found in type ")
+	if !found {
+		return text
+	}
+	return strings.Replace(before, "field ", "key ", 1) + " is not known"
 }
 
 // environment applies ADMIT_STORE, ADMIT_LISTEN, ADMIT_HTTP and ADMIT_LOG_LEVEL. An unknown ADMIT_ variable is an error: a misspelt one
@@ -151,12 +188,14 @@ func (c *Config) Check() error {
 		add("store", "a folder", `""`)
 	}
 	for _, a := range []struct{ key, address string }{{"listen", c.Listen}, {"http", c.HTTP}} {
-		host, _, err := net.SplitHostPort(a.address)
-		if err != nil {
-			add(a.key, "host:port", fmt.Sprintf("%q", a.address))
+		host, port, err := net.SplitHostPort(a.address)
+		if n, bad := strconv.ParseUint(port, 10, 16); err != nil || bad != nil {
+			add(a.key, "host:port with a port from 0 to 65535", fmt.Sprintf("%q", a.address))
 			continue
+		} else if n != 0 && a.key == "http" && a.address == c.Listen {
+			add(a.key, "another address than listen", fmt.Sprintf("%q", a.address))
 		}
-		if !c.TLS.given() && !loopback(host) {
+		if !c.TLS.given() && !Loopback(host) {
 			add(a.key, "a loopback address where no tls is given", fmt.Sprintf("%q", a.address))
 		}
 	}
@@ -191,8 +230,13 @@ func (c *Config) Check() error {
 			add(key+".name", "a name of its own without a wildcard", fmt.Sprintf("%q", k.Name))
 		}
 		callers[k.Name] = true
-		if !slices.Contains(permissions, k.Permission) {
-			add(key+".permission", fmt.Sprintf("one of %v", permissions), fmt.Sprintf("%q", k.Permission))
+		if len(k.Permissions) == 0 {
+			add(key+".permissions", fmt.Sprintf("some of %v", permissions), "none")
+		}
+		for _, p := range k.Permissions {
+			if !slices.Contains(permissions, p) {
+				add(key+".permissions", fmt.Sprintf("some of %v", permissions), fmt.Sprintf("%q", p))
+			}
 		}
 		for _, s := range k.Stations {
 			if len(c.Stations) > 0 && !names[s] {
@@ -222,8 +266,8 @@ func (c *Config) Check() error {
 
 func (t TLS) given() bool { return t.Certificate != "" && t.Key != "" && t.ClientAuthorities != "" }
 
-// loopback reports whether a host is a loopback address by its form; a name other than localhost is not trusted to be one.
-func loopback(host string) bool {
+// Loopback reports whether a host is a loopback address by its form; a name other than localhost is not trusted to be one.
+func Loopback(host string) bool {
 	if host == "localhost" {
 		return true
 	}

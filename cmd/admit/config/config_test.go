@@ -14,7 +14,7 @@ func TestGood(t *testing.T) {
 		t.Fatal("no examples")
 	}
 	for _, f := range files {
-		if _, err := Load(f, nil); err != nil {
+		if _, err := Load(f, nil, nil); err != nil {
 			t.Errorf("%v", err)
 		}
 	}
@@ -31,7 +31,7 @@ func TestBad(t *testing.T) {
 		if err != nil {
 			t.Fatal(err)
 		}
-		_, err = Load(f, nil)
+		_, err = Load(f, nil, nil)
 		if err == nil {
 			t.Errorf("%s: taken", f)
 			continue
@@ -53,11 +53,15 @@ func TestBad(t *testing.T) {
 
 // TestOrder: the environment overrides the file, and an unknown variable of ours is an error.
 func TestOrder(t *testing.T) {
-	c, err := Load("testdata/good/plant.yaml", []string{"ADMIT_STORE=/elsewhere", "HOME=/root", "ADMIT_REQUIRE_PEERS=1"})
+	c, err := Load("testdata/good/plant.yaml", []string{"ADMIT_STORE=/elsewhere", "HOME=/root", "ADMIT_REQUIRE_PEERS=1"}, nil)
 	if err != nil || c.Store != "/elsewhere" || c.Listen != "0.0.0.0:7340" {
 		t.Errorf("store %q, listen %q, %v", c.Store, c.Listen, err)
 	}
-	if _, err := Load("", []string{"ADMIT_STOER=/x"}); err == nil || !strings.Contains(err.Error(), "ADMIT_STOER") {
+	c, err = Load("testdata/bad/open-without-tls.yaml", nil, func(c *Config) { c.Listen, c.HTTP = "127.0.0.1:1", "127.0.0.1:2" })
+	if err != nil || c.Listen != "127.0.0.1:1" {
+		t.Errorf("a flag does not override a bad value of the file: %v", err)
+	}
+	if _, err := Load("", []string{"ADMIT_STOER=/x"}, nil); err == nil || !strings.Contains(err.Error(), "ADMIT_STOER") {
 		t.Errorf("a misspelt variable: %v", err)
 	}
 }

@@ -5,6 +5,7 @@ package report
 import (
 	"fmt"
 	"io"
+	"math"
 	"strings"
 	"time"
 
@@ -130,7 +131,11 @@ func (p *printer) parameters(j *verdict.Judgement) {
 	}
 	if q := j.Quality; q != nil {
 		p.line("\nMain sweep")
-		p.line("  signal to noise %.1f dB, reduced chi-square %.3f, residual correlation %.3f", q.SNRDecibel, q.ReducedChiSquare, q.ResidualCorrelation)
+		chi := "not known (receiver noise not stated)"
+		if q.ReducedChiSquare > 0 {
+			chi = fmt.Sprintf("%.3f", q.ReducedChiSquare)
+		}
+		p.line("  signal to noise %.1f dB, reduced chi-square %s, residual correlation %.3f", q.SNRDecibel, chi, q.ResidualCorrelation)
 		if q.SettlingTimeConstants > 0 {
 			p.line("  dwell %.2f loaded time constants", q.SettlingTimeConstants)
 		}
@@ -144,7 +149,12 @@ func (p *printer) budget(j *verdict.Judgement) {
 	}
 	p.line("\nUncertainty budget (standard uncertainties)")
 	p.line("  %-24s %12s %12s %12s %12s", "source", "fs", "R1", "L1", "C0")
-	share := func(v float64, unit string) string { return verdict.FormatBound(rounded(v), unit) }
+	share := func(v float64, unit string) string {
+		if v == 0 {
+			return "–"
+		}
+		return verdict.FormatBound(rounded(v), unit)
+	}
 	for _, b := range j.Budget {
 		p.line("  %-24s %12s %12s %12s %12s", strings.ReplaceAll(b.Source, "_", " "),
 			share(b.MotionalResonanceHz, verdict.UnitHertz), share(b.MotionalResistanceOhm, verdict.UnitOhm),
@@ -154,7 +164,9 @@ func (p *printer) budget(j *verdict.Judgement) {
 
 // rounded keeps two figures of a share.
 func rounded(v float64) float64 {
-	var r float64
-	fmt.Sscanf(fmt.Sprintf("%.1e", v), "%g", &r)
-	return r
+	if v == 0 || math.IsInf(v, 0) || math.IsNaN(v) {
+		return v
+	}
+	unit := math.Pow(10, math.Floor(math.Log10(math.Abs(v)))-1)
+	return math.Round(v/unit) * unit
 }

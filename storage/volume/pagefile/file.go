@@ -9,6 +9,7 @@ import (
 	"time"
 
 	"go.etcd.io/bbolt"
+	bolterrors "go.etcd.io/bbolt/errors"
 
 	"example.com/admit/storage/volume/damage"
 	"example.com/admit/storage/volume/disk"
@@ -145,7 +146,7 @@ func openBolt(path string, o Options) (db *bbolt.DB, err error) {
 		PageSize: tree.PageSize, Timeout: o.LockTimeout, FreelistType: bbolt.FreelistMapType,
 		InitialMmapSize: int(o.MapBytes), NoStatistics: true, OpenFile: o.OpenFile,
 	})
-	if errors.Is(err, bbolt.ErrTimeout) {
+	if errors.Is(err, bolterrors.ErrTimeout) {
 		return nil, fmt.Errorf("%s: %w", path, ErrLocked)
 	}
 	return db, err
@@ -165,7 +166,7 @@ func (f *File) Bytes() int64 {
 func (f *File) View(read func(*tree.Reader) error) error {
 	tx, err := f.db.Begin(false)
 	if err != nil {
-		if errors.Is(err, bbolt.ErrDatabaseNotOpen) {
+		if errors.Is(err, bolterrors.ErrDatabaseNotOpen) {
 			err = ErrClosed
 		}
 		return fmt.Errorf("%s: %w", f.path, err)

@@ -8,6 +8,7 @@ import (
 	"syscall"
 
 	"go.etcd.io/bbolt"
+	bolterrors "go.etcd.io/bbolt/errors"
 
 	"example.com/admit/storage/volume/damage"
 	"example.com/admit/storage/volume/disk"
@@ -69,7 +70,7 @@ func releases(tx *bbolt.Tx) (ok bool) {
 		}
 	}()
 	err := tx.Rollback()
-	return err == nil || errors.Is(err, bbolt.ErrTxClosed)
+	return err == nil || errors.Is(err, bolterrors.ErrTxClosed)
 }
 
 // committed notes how far the file is in use.

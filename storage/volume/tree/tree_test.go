@@ -9,6 +9,7 @@ import (
 	"math/rand/v2"
 	"os"
 	"path/filepath"
+	"slices"
 	"testing"
 	"time"
 
@@ -193,11 +194,12 @@ func TestFlippedStructure(t *testing.T) {
 	}
 }
 
-// onlySize says whether the byte belongs to the size of the last value of a leaf: structure cannot tell how long that is, its envelope can.
+// onlySize says whether the byte belongs to the sizes of the last key and value of a leaf: structure cannot tell where those end, the envelope
+// of the value can, which covers both.
 func onlySize(content []byte, page, at int) bool {
 	elements := int(binary.LittleEndian.Uint16(content[page*tree.PageSize+10:]))
 	last := page*tree.PageSize + 16 + 16*(elements-1)
-	return binary.LittleEndian.Uint16(content[page*tree.PageSize+8:]) == 2 && at >= last+12 && at < last+16
+	return binary.LittleEndian.Uint16(content[page*tree.PageSize+8:]) == 2 && at >= last+8 && at < last+16
 }
 
 // reaches says whether a page is part of the tree, not merely old content of a free one.
@@ -236,6 +238,65 @@ func countAll(r *tree.Reader) (int, error) {
 		}
 	}
 	return n, nil
+}
+
+// TestFlippedBranchKey flips bits in the keys of branch pages, which send a search to the wrong leaf: what was there is found or damage is
+// met, it is never silently absent.
+func TestFlippedBranchKey(t *testing.T) {
+	content, _ := build(t)
+	r, meta := reader(t, content)
+	wide, _, err := r.Bucket("wide")
+	if err != nil {
+		t.Fatal(err)
+	}
+	var keys [][]byte
+	cursor := wide.Cursor()
+	for k, _, err := cursor.First(); k != nil; k, _, err = cursor.Next() {
+		if err != nil {
+			t.Fatal(err)
+		}
+		keys = append(keys, k)
+	}
+	random := rand.New(rand.NewPCG(13, 14))
+	flips, met := 40, 0
+	if testing.Short() {
+		flips = 10
+	}
+	for done := 0; done < flips; {
+		page := 2 + random.IntN(int(meta.HighWater)-2)
+		header := content[page*tree.PageSize:]
+		if binary.LittleEndian.Uint64(header) != uint64(page) || binary.LittleEndian.Uint16(header[8:]) != 1 || !reaches(content, meta, uint64(page)) {
+			continue
+		}
+		done++
+		element := 16 + 16*random.IntN(int(binary.LittleEndian.Uint16(header[10:])))
+		at := page*tree.PageSize + element + int(binary.LittleEndian.Uint32(header[element:])) +
+			random.IntN(int(binary.LittleEndian.Uint32(header[element+4:])))
+		key := content[page*tree.PageSize+element+int(binary.LittleEndian.Uint32(header[element:])):][:binary.LittleEndian.Uint32(header[element+4:])]
+		near, _ := slices.BinarySearchFunc(keys, bytes.Clone(key), bytes.Compare)
+		bit := byte(1) << random.IntN(8)
+		content[at] ^= bit
+		if len(tree.Check(bytes.NewReader(content), meta)) == 0 {
+			t.Errorf("page %d, byte %d: check found nothing", page, at%tree.PageSize)
+		}
+		broken := tree.NewReader(tree.FileSource{File: bytes.NewReader(content)}, meta.Root, meta.HighWater)
+		for _, key := range keys[max(0, near-150):min(len(keys), near+150)] {
+			found, ok, err := broken.Bucket("wide")
+			if err == nil && ok {
+				var value []byte
+				if value, err = found.Get(key); err == nil && value == nil {
+					t.Errorf("page %d, byte %d, bit %#x: %q is absent", page, at%tree.PageSize, bit, key)
+				}
+			}
+			if err != nil {
+				met++
+			}
+		}
+		content[at] ^= bit
+	}
+	if met == 0 {
+		t.Error("no search met the damage: the test proves nothing")
+	}
 }
 
 // TestFreelistOverlap puts a page that is in use on the free list: bbolt would overwrite it.

@@ -1,4 +1,6 @@
-package rpc
+// Package floor knows the test floor as it stands: the latest state of every station, from what is recorded and which streams are open. It
+// keeps no history.
+package floor
 
 import (
 	"cmp"
@@ -11,14 +13,14 @@ import (
 	"example.com/admit/service/inspection"
 )
 
-// maxUnlisted bounds how many stations the board remembers where the configuration lists none: a name is then whatever a caller says.
-const maxUnlisted = 1000
+// MaxUnlisted bounds how many stations the board remembers where the configuration lists none: a name is then whatever a caller says.
+const MaxUnlisted = 1000
 
 // seedFrom is how many of the newest records are looked through for stations where the configuration lists none.
 const seedFrom = 1000
 
-// StationState is one station and what it was last seen doing.
-type StationState struct {
+// State is one station and what it was last seen doing.
+type State struct {
 	inspection.Station
 	ContactHead inspection.ContactHead   // of the last inspection; "": none yet
 	Calibration inspection.CalibrationID // of the last inspection; "": none yet, or the nominal network
@@ -40,19 +42,19 @@ type Board struct {
 }
 
 type boardEntry struct {
-	StationState
+	State
 	streams int
 	version uint64 // of its last change
 }
 
-// NewBoard returns the board of the configured stations; with none, every name is accepted, with an empty line.
-func NewBoard(stations []inspection.Station, clock inspection.Clock) (*Board, error) {
+// New returns the board of the configured stations; with none, every name is accepted, with an empty line.
+func New(stations []inspection.Station, clock inspection.Clock) (*Board, error) {
 	b := &Board{clock: clock, listed: len(stations) > 0, entries: map[inspection.StationID]*boardEntry{}, news: make(chan struct{})}
 	for _, s := range stations {
 		if s.Name == "" || b.entries[s.Name] != nil {
 			return nil, fmt.Errorf("station %q: want a name that stands once", s.Name)
 		}
-		b.entries[s.Name] = &boardEntry{StationState: StationState{Station: s}}
+		b.entries[s.Name] = &boardEntry{State: State{Station: s}}
 	}
 	return b, nil
 }
@@ -81,22 +83,22 @@ func (b *Board) Seed(ctx context.Context, archive inspection.Archive) error {
 }
 
 // Latest returns the state of every station, ordered by line and name.
-func (b *Board) Latest() []StationState {
+func (b *Board) Latest() []State {
 	states, _, _ := b.Since(0)
 	return states
 }
 
 // Since returns the states that changed after a version (0: every state), ordered by line and name, with the version that they bring the
 // reader to, and a channel that is closed by the next change after it.
-func (b *Board) Since(version uint64) (states []StationState, now uint64, changed <-chan struct{}) {
+func (b *Board) Since(version uint64) (states []State, now uint64, changed <-chan struct{}) {
 	b.mu.Lock()
 	defer b.mu.Unlock()
 	for _, e := range b.entries {
 		if version == 0 || e.version > version {
-			states = append(states, e.StationState)
+			states = append(states, e.State)
 		}
 	}
-	slices.SortFunc(states, func(x, y StationState) int { return cmp.Or(cmp.Compare(x.Line, y.Line), cmp.Compare(x.Name, y.Name)) })
+	slices.SortFunc(states, func(x, y State) int { return cmp.Or(cmp.Compare(x.Line, y.Line), cmp.Compare(x.Name, y.Name)) })
 	// A board on which nothing happened yet is still version 1 for its reader, so that 0 goes on meaning "everything".
 	return states, max(b.version, 1), b.news
 }
@@ -135,8 +137,8 @@ func (b *Board) show(r *inspection.Record, seen time.Time) {
 	b.change(e)
 }
 
-// opened notes an open stream of the station; the returned function notes its end.
-func (b *Board) opened(station inspection.StationID) (closed func()) {
+// Opened notes an open stream of the station; the returned function notes its end.
+func (b *Board) Opened(station inspection.StationID) (closed func()) {
 	b.stream(station, +1)
 	return func() { b.stream(station, -1) }
 }
@@ -169,7 +171,7 @@ func (b *Board) entry(station inspection.StationID) *boardEntry {
 	if e != nil || b.listed {
 		return e
 	}
-	if len(b.entries) >= maxUnlisted {
+	if len(b.entries) >= MaxUnlisted {
 		var oldest *boardEntry
 		for _, o := range b.entries {
 			if o.streams == 0 && (oldest == nil || o.version < oldest.version) {
@@ -181,13 +183,13 @@ func (b *Board) entry(station inspection.StationID) *boardEntry {
 		}
 		delete(b.entries, oldest.Name)
 	}
-	e = &boardEntry{StationState: StationState{Station: inspection.Station{Name: station}}}
+	e = &boardEntry{State: State{Station: inspection.Station{Name: station}}}
 	b.entries[station] = e
 	return e
 }
 
-// admits reports whether the configuration knows the station and allows the contact head there.
-func (b *Board) admits(station inspection.StationID, head inspection.ContactHead) error {
+// Admits reports whether the configuration knows the station and allows the contact head there.
+func (b *Board) Admits(station inspection.StationID, head inspection.ContactHead) error {
 	if !b.listed {
 		return nil
 	}
@@ -195,23 +197,23 @@ func (b *Board) admits(station inspection.StationID, head inspection.ContactHead
 	defer b.mu.Unlock()
 	e := b.entries[station]
 	if e == nil {
-		return inspection.Faultf(inspection.Forbidden, "station", "%q is not in the list of stations", clip(string(station)))
+		return inspection.Faultf(inspection.Forbidden, "station", "%q is not in the list of stations", station)
 	}
 	if !e.Allows(head) {
-		return inspection.Faultf(inspection.Forbidden, "contact_head", "%q is not in the list of station %s, %q", clip(string(head)), station, e.ContactHeads)
+		return inspection.Faultf(inspection.Forbidden, "contact_head", "%q is not in the list of station %s, %q", head, station, e.ContactHeads)
 	}
 	return nil
 }
 
-// belongs reports whether the contact head is listed at one of the stations that the caller speaks for; without lists every head is.
-func (b *Board) belongs(c Caller, head inspection.ContactHead) bool {
+// Belongs reports whether the contact head is listed at one of the stations that speaksFor accepts; without lists every head is.
+func (b *Board) Belongs(head inspection.ContactHead, speaksFor func(inspection.StationID) bool) bool {
 	b.mu.Lock()
 	defer b.mu.Unlock()
 	if !b.listed {
 		return true
 	}
 	for name, e := range b.entries {
-		if c.SpeaksFor(name) && e.Allows(head) {
+		if speaksFor(name) && e.Allows(head) {
 			return true
 		}
 	}
