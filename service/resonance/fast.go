@@ -110,14 +110,16 @@ func (f *Fitter) rememberUnstated() {
 const smallLag = 0.015
 
 // lags says whether what a settled model leaves looks like lag. A response y = 1/(1 + jt) that is passed at a slow rate becomes y + j s y^3 to
-// first order, s of the sign of the direction (the envelope equation expanded in the rate), so one number tells. A residual too large for
-// small lag is given the benefit of the doubt.
+// first order, s positive in the direction of the sweep (the envelope equation expanded in the rate), so one number tells. While lag is
+// small that explains nearly all; of a resonator that hardly had time to ring up it explains a few percent, but then s is large. A
+// second mode or a filter gives next to nothing, or the wrong sign.
 func (f *Fitter) lags(systematic float64) bool {
-	const leastPart = 0.25 // of the power of what is systematic
+	const (
+		leastPart = 0.25 // of the power of what is systematic
+		largeLag  = 0.4
+		somePart  = 0.02 // of that power, at a large lag
+	)
 	l := &f.best.loaded
-	if systematic > smallLag*l.response {
-		return true
-	}
 	rows := 2 * f.points.n
 	f.wide = grown(f.wide, rows)
 	column := f.wide[:rows]
@@ -129,7 +131,18 @@ func (f *Fitter) lags(systematic float64) bool {
 		v := amplitude * y * y * y * complex(0, 1)
 		column[2*k], column[2*k+1] = real(v), imag(v)
 	}
-	return f.beside(column, f.pairs).explained > leastPart*systematic*systematic*float64(f.seen.points)
+	e := f.beside(column, f.pairs)
+	lag := e.value * f.direction()
+	part := e.explained / (systematic * systematic * float64(f.seen.points))
+	return lag > 0 && (part > leastPart || lag > largeLag && part > somePart)
+}
+
+// direction returns 1 for a sweep upwards and -1 for one downwards.
+func (f *Fitter) direction() float64 {
+	if o := f.points.offsetHz; o[len(o)-1] < o[0] {
+		return -1
+	}
+	return 1
 }
 
 // responseAt returns what the sample at a point has of the resonance, in units of the raw sample and the direction of the residuals.
@@ -173,10 +186,7 @@ func (f *Fitter) startRinging(plain *saved, t timing, free bool) bool {
 	// What G0 and phase have taken up of the ringing they give back.
 	f.forward = forward{points: &f.points, memory: true, timing: t, stretched: free}
 	f.shape.memory, f.shape.timing, f.shape.stretched = true, t, free
-	later := 1.0
-	if o := f.points.offsetHz; o[len(o)-1] < o[0] {
-		later = -1
-	}
+	later := f.direction()
 	starts := []struct{ back, width float64 }{{0, 1}, {0.3, 1}, {1, 1}, {0.5, 0.5}, {1, 0.2}, {1.5, 0.2}, {1, 0.1}}
 	if plain.seen.systematic() < smallLag*plain.best.loaded.response {
 		starts = starts[:2]

@@ -24,6 +24,14 @@ func TestFitExact(t *testing.T) {
 				slices.Reverse(frequencies)
 				f.Fit(measured(p.unit, in, frequencies), &est)
 				m := est.Unit().Modes[0]
+				if in.d == 1 {
+					y0 := complex(0, 2*math.Pi*p.unit.fs*p.unit.c0)
+					centre := p.unit.fs - imag(in.c/(1+in.c*y0))/(4*math.Pi*p.unit.l1)
+					q := est.Quality
+					if math.Abs(q.LoadedResonanceHz-centre) > 1e-3*bw || math.Abs(q.LoadedBandwidthHz/bw-1) > 1e-3 {
+						t.Errorf("%s in %s: loaded resonance off by %g bandwidths, width %g of what it is", p.name, in.name, (q.LoadedResonanceHz-centre)/bw, q.LoadedBandwidthHz/bw)
+					}
+				}
 				if est.State != Found || math.Abs(m.ResonanceHz-p.unit.fs) > 1e-8*bw ||
 					math.Abs(m.ResistanceOhm/p.unit.r1-1) > 1e-8 || math.Abs(m.InductanceHenry/p.unit.l1-1) > 1e-8 ||
 					math.Abs(est.Value[ShuntCapacitanceFarad]/p.unit.c0-1) > 1e-7 {

@@ -1,6 +1,16 @@
 // Package resonance turns one sweep of one window into the motional parameters of the mode in it: R1, L1, C1, C0, fs and Q with their
 // covariance. It fits in the domain of the raw samples, where the noise is white, with the network's terms inside the model, so nothing
 // is lost to de-embedding and the covariance is honest. It says when there is nothing to fit, and why; it judges no limits.
+//
+// The way of a sweep. points reduces each sample to a plane in which all networks look alike. plane finds a pole there by linear least squares,
+// or, where that does not convince, by laying templates over the samples; either is a start. The models are forward (a unit in a known
+// network, settled or, with memory.go, ringing), shape (a resonance in an unknown network) and magnitude (Rice distributed samples);
+// leastsquares fits them, with Huber weights only where wild points stand alone. extend adds a shunt conductance, a free phase or a factor
+// on the timing where the sweep asks for them. judge holds the outcome against what else the sweep could be, and covariance and systematic say
+// how well it is known. Derive goes on from the parameters to everything that follows from the circuit.
+//
+// Accuracy. On white noise the estimates reach the Cramer-Rao bound within the scatter of some ten thousand trials, at any level from 5 dB a
+// point up, settled or at a dwell of a fiftieth of the loaded time constant, and magnitudes reach that of their own distribution.
 package resonance
 
 import (
@@ -100,7 +110,7 @@ type Estimate struct {
 	Systematic  []Contribution // by influence
 	Fitted      [Parameters]bool
 
-	ScaleUnknown bool // R1, L1, C0 carry no meaning; fs and Q do
+	ScaleUnknown bool // R1, L1, C0 carry no meaning; fs and Q do, those of the resonator as the network loads it
 	Quality      Quality
 }
 
