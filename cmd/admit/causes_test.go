@@ -220,11 +220,11 @@ func TestBadFolders(t *testing.T) {
 		{"no main sweep", func(dir string) error {
 			return edit(dir, "inspection.yaml", func(s string) string { return strings.Replace(s, "role: main", "role: unwanted", 1) })
 		}, []string{"sweeps", "role main"}},
-		{"a drive section", func(dir string) error {
+		{"unwanted modes", func(dir string) error {
 			return edit(dir, "part-type.yaml", func(s string) string {
-				return s + "drive:\n  levels: [1 uW, 10 uW]\n  motional_resistance: {max: 60 ohm}\n"
+				return s + "unwanted_modes:\n  - {from: -100 kHz, to: 500 kHz, minimum_width: 50 Hz, suppression_db: {min: 3}, definition: resistance-ratio}\n"
 			})
-		}, []string{"drive"}},
+		}, []string{"unwanted_modes"}},
 		{"no such folder", os.RemoveAll, []string{"unit"}},
 	} {
 		t.Run(c.name, func(t *testing.T) {

@@ -54,7 +54,7 @@ func run(ctx context.Context, args []string, s streams) int {
 	root.SetOut(s.out)
 	root.SetErr(s.err)
 	root.SetFlagErrorFunc(func(_ *cobra.Command, err error) error { return badInput{err} })
-	root.AddCommand(judgeCommand(), serveCommand(), replayCommand(), showCommand(), demoCommand(), publishCommand(), checkConfigCommand())
+	root.AddCommand(judgeCommand(), orderCommand(), serveCommand(), replayCommand(), showCommand(), demoCommand(), publishCommand(), checkConfigCommand())
 	err := root.ExecuteContext(ctx)
 	var code exitStatus
 	var input badInput

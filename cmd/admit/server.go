@@ -69,7 +69,10 @@ func build(c config.Config, log *slog.Logger) (s *server, err error) {
 	if err != nil {
 		return s, err
 	}
-	desk := &inspection.Desk{Judge: inspection.NewJudge(), Recorder: s.store, Catalogue: s.store, Clock: clock, Observer: numbers, Software: revision()}
+	desk := &inspection.Desk{
+		Judge: inspection.NewJudge(), Recorder: s.store, Recollection: inspection.NewRecollection(s.store), Catalogue: s.store,
+		Clock: clock, Observer: numbers, Software: revision(),
+	}
 	s.rpc, err = rpc.New(rpc.Options{Desk: desk, Archive: s.store, Publisher: s.store, Stations: stations, Access: accessOf(c), TLS: certificates, Log: log})
 	if err != nil {
 		return s, badInput{err}

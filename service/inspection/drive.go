@@ -84,7 +84,7 @@ func (w *workup) levelReading(of parttype.Quantity, step int, levels ...*level) 
 	}
 	for _, l := range levels {
 		switch {
-		case w.series.high && l.step == 0:
+		case w.series.high && l.wanted < w.p.DriveLevelWatt:
 			suspend(verdict.HighResistanceAtLowDrive, "to be looked at again")
 		case l.fit == nil && w.series.high:
 			suspend(verdict.HighResistanceAtLowDrive, fmt.Sprintf("step %d was not measured", l.step))
@@ -280,7 +280,7 @@ func (w *workup) describeSleep() {
 	if !first.fit.sound() || !w.g.scale || !(first.wanted < w.p.DriveLevelWatt) {
 		return
 	}
-	ratio := func(over *fitted) (float64, bool) {
+	ratio := func(over *fitted) (value float64, isHigh bool) {
 		q, ok := quantityFrom([]*resonance.Estimate{first.fit.est, over.est}, func(u []crystal.Unit) (float64, bool) {
 			return u[0].Modes[0].ResistanceOhm / u[1].Modes[0].ResistanceOhm, true
 		})
@@ -290,38 +290,45 @@ func (w *workup) describeSleep() {
 		v, _, ok := q.measured()
 		return v.Value, ok && v.Value > highRatio && v.Value-1 > 3*v.StandardUncertainty
 	}
-	var high, back *level // the strongest level after the first, and the last one at the level of the first
+	var high, back *level // the strongest level after the first, and the last one at the level of the first behind a higher one
+	risen := false
 	for k := 1; k < len(levels); k++ {
 		l := &levels[k]
-		if !l.fit.sound() {
-			continue
-		}
-		if l.wanted > first.wanted*(1+1e-6) && (high == nil || l.wanted > high.wanted) {
+		higher := l.wanted > first.wanted*(1+1e-6)
+		risen = risen || higher && l.fit != nil
+		switch {
+		case !l.fit.sound():
+		case higher && (high == nil || l.wanted > high.wanted):
 			high = l
-		}
-		if high != nil && near(l.wanted, first.wanted, 1e-6) {
+		case risen && near(l.wanted, first.wanted, 1e-6):
 			back = l
 		}
 	}
-	if high == nil {
-		return
+	strong, falls := 0.0, false
+	if high != nil {
+		strong, falls = ratio(high.fit)
 	}
-	strong, falls := ratio(high.fit)
-	if !falls {
+	cured := false
+	if back != nil {
+		var again float64
+		again, cured = ratio(back.fit)
+		cured = cured && again > 1+(strong-1)/2
+	}
+	if !falls && !cured {
 		return
 	}
 	ohm := func(l *level) string {
 		return verdict.FormatBound(significant(math.Exp(l.fit.est.Value[resonance.LogResistance])), verdict.UnitOhm)
 	}
-	text := fmt.Sprintf("The unit sleeps: at low drive (%s) its motional resistance is %s, %.3g times that at %s",
-		verdict.FormatBound(first.wanted, verdict.UnitWatt), ohm(first), strong, verdict.FormatBound(high.wanted, verdict.UnitWatt))
-	if back == nil {
-		w.remark("%s.", text)
-		return
+	text := fmt.Sprintf("The unit sleeps: at low drive (%s) its motional resistance is high, %s", verdict.FormatBound(first.wanted, verdict.UnitWatt), ohm(first))
+	if falls {
+		text += fmt.Sprintf(" and %s at %s", ohm(high), verdict.FormatBound(high.wanted, verdict.UnitWatt))
 	}
-	if again, cured := ratio(back.fit); cured && again > 1+(strong-1)/2 {
-		w.remark("%s; the strong drive cured it, %s are left when the level returns. The cure need not last, and a test right after it proves nothing.", text, ohm(back))
-		return
+	switch {
+	case cured:
+		text += fmt.Sprintf("; strong drive cured it, and %s are left when the level returns. The cure need not last: a test right after it proves nothing", ohm(back))
+	case back != nil:
+		text += fmt.Sprintf("; strong drive did not cure it, it is %s when the level returns", ohm(back))
 	}
-	w.remark("%s, and %s when the level returns: the strong drive did not cure it.", text, ohm(back))
+	w.remark("%s.", text)
 }

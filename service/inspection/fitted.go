@@ -73,10 +73,13 @@ func (b *bench) fit(c *Case, index int, expected resonance.Expected, g *gate) (*
 		return f, nil
 	}
 	b.fitter.Fit(&req, f.est)
-	addContact(f.est, contactOf(c))
 	if known(f.est) && !f.est.ScaleUnknown {
 		f.findLoudest(g, req.Terms)
+		if c.PartType.Drive != nil && s.Role != sweep.Overtone {
+			b.unbend(f, &req)
+		}
 	}
+	addContact(f.est, contactOf(c))
 	return f, nil
 }
 

@@ -1,11 +1,9 @@
 package inspection
 
 import (
-	"fmt"
 	"math"
 
 	"example.com/admit/service/crystal"
-	"example.com/admit/service/resonance"
 	"example.com/admit/service/verdict"
 )
 
@@ -65,78 +63,4 @@ func (w *workup) repeats(p *PreviousUnit) bool {
 		same(p.ResistanceOhm, func(u crystal.Unit) (float64, bool) { return u.Modes[0].ResistanceOhm, true }, 0) &&
 		same(p.CapacitanceFarad, func(u crystal.Unit) (float64, bool) { return u.Modes[0].CapacitanceFarad(), true }, 0) &&
 		same(p.ShuntCapacitanceFarad, shuntCapacitance, 0)
-}
-
-// contact looks whether R1 moves between sweeps at one level by more than the contact does from one insertion to the next. Levels that differ are
-// left to the drive series, and a series that shows a dependence is looked at first: R1 may move for that reason too.
-func (w *workup) contact() {
-	if w.p.Drive == nil || !w.g.scale || w.series.broken != "" {
-		return
-	}
-	var at []*fitted // sweeps at one level, in measuring order
-	var level float64
-	look := func(f *fitted, watt float64) {
-		if !f.sound() {
-			return
-		}
-		if len(at) > 0 && !near(watt, level, 1e-6) {
-			at = at[:0]
-		}
-		level = watt
-		at = append(at, f)
-		for _, other := range at[:len(at)-1] {
-			w.compareContact(other, f)
-		}
-	}
-	for i, f := range w.fits {
-		switch {
-		case f == nil:
-		case i == w.main:
-			if watt, ok := w.mainLevel(); ok {
-				look(f, watt)
-			}
-		case w.series.isLevel(f):
-			look(f, w.p.Drive.LevelsWatt[f.sweep.DriveStep])
-		}
-	}
-}
-
-// mainLevel returns the level of the series at which the main sweep was taken.
-func (w *workup) mainLevel() (watt float64, ok bool) {
-	power, ok := w.fits[w.main].powerWatt()
-	if !ok {
-		return 0, false
-	}
-	for _, watt := range w.p.Drive.LevelsWatt {
-		if near(power.Value, watt, w.p.Drive.TolerancePercent/100) {
-			return watt, true
-		}
-	}
-	return 0, false
-}
-
-// isLevel reports whether a sweep is a usable level of the series.
-func (s *series) isLevel(f *fitted) bool {
-	for k := range s.levels {
-		if s.levels[k].fit == f {
-			return s.levels[k].usable()
-		}
-	}
-	return false
-}
-
-// compareContact notes an unstable contact when two sweeps at one level disagree.
-func (w *workup) compareContact(a, b *fitted) {
-	q, ok := quantityFrom([]*resonance.Estimate{a.est, b.est}, func(u []crystal.Unit) (float64, bool) {
-		return u[1].Modes[0].ResistanceOhm - u[0].Modes[0].ResistanceOhm, true
-	})
-	if !ok || namedCause(w.g.causes, verdict.UnstableContact) {
-		return
-	}
-	v, _, ok := q.measured()
-	allowed := repeatFactor * math.Hypot(v.StandardUncertainty, math.Sqrt2*contactOf(w.c))
-	if ok && math.Abs(v.Value) > allowed {
-		w.g.causes = append(w.g.causes, verdict.NewCause(verdict.UnstableContact, fmt.Sprintf(
-			"R1 moved by %.3g Ω between two sweeps at the same level (sweeps %d and %d); the contact explains %.2g Ω.", v.Value, a.index, b.index, allowed)))
-	}
 }

@@ -8,6 +8,7 @@ import (
 	"example.com/admit/service/crystal"
 	"example.com/admit/service/parttype"
 	"example.com/admit/service/resonance"
+	"example.com/admit/service/sweep"
 	"example.com/admit/service/verdict"
 )
 
@@ -52,8 +53,10 @@ func (w *workup) overtoneOrder() *verdict.Order {
 		return nil
 	}
 	all := []response{w.response(w.nominal)}
-	for _, o := range w.overtones {
-		all = append(all, w.response(o.fit))
+	for _, f := range w.fits { // whatever order a window was taken for: where its response lies counts
+		if f != nil && f.sweep.Role == sweep.Overtone && f.sound() {
+			all = append(all, w.response(f))
+		}
 	}
 	if !w.g.scale && len(all) == 1 {
 		return nil

@@ -13,13 +13,6 @@ import (
 	"example.com/admit/service/verdict"
 )
 
-// overtoneFound is one overtone that a window shows.
-type overtoneFound struct {
-	order int     // 0 for one at a frequency ratio
-	ratio float64 // of its window, 0 for one with an order
-	fit   *fitted
-}
-
 // fundamentalHz returns the measured frequency that overtones are multiples of, f1: that of the main mode over its order. 0: not measured.
 func (w *workup) fundamentalHz() float64 {
 	if w.nominal == nil || !w.nominal.sound() {
@@ -59,18 +52,18 @@ func (w *workup) overtoneLimits() {
 		if f := w.strongest(o.Order, o.FrequencyRatio, windows); f != nil {
 			limited[f] = true
 			r.SuspendedBy = w.suspendedBy(false, w.nominal, f)
-			w.found(o.Order, o.FrequencyRatio, f, o.Definition, &r)
+			w.found(o.Order, f, o.Definition, &r)
 		} else {
 			w.notFound(o, windows, &r, w.confidence(o.Decide))
 		}
 		w.limit(limit, r)
 	}
-	for i, f := range w.fits { // windows that no limit asks for
+	for _, f := range w.fits { // windows that no limit asks for
 		if f == nil || f.sweep.Role != sweep.Overtone || limited[f] {
 			continue
 		}
 		if best := w.strongest(f.sweep.Order, f.sweep.FrequencyRatio, w.windows(f.sweep.Order, f.sweep.FrequencyRatio)); best == f && !w.limitsOvertone(f.sweep) {
-			w.found(f.sweep.Order, f.sweep.FrequencyRatio, w.fits[i], parttype.ResistanceRatio, nil)
+			w.found(f.sweep.Order, f, parttype.ResistanceRatio, nil)
 		}
 	}
 }
@@ -115,7 +108,7 @@ func (w *workup) strongest(order int, ratio float64, windows []*fitted) (best *f
 }
 
 // found reads the suppression of an overtone against the main mode, and where it lies.
-func (w *workup) found(order int, ratio float64, f *fitted, definition parttype.Definition, r *verdict.Reading) {
+func (w *workup) found(order int, f *fitted, definition parttype.Definition, r *verdict.Reading) {
 	if w.nominal == nil || !w.nominal.sound() {
 		return
 	}
@@ -126,7 +119,6 @@ func (w *workup) found(order int, ratio float64, f *fitted, definition parttype.
 		}
 		return
 	}
-	w.overtones = append(w.overtones, overtoneFound{order, ratio, f})
 	both := []*resonance.Estimate{w.nominal.est, f.est}
 	suppression, ok := quantityFrom(both, func(u []crystal.Unit) (float64, bool) {
 		return suppressionDB(definition, u[0].Modes[0].ResistanceOhm, u[1].Modes[0].ResistanceOhm), true
@@ -259,12 +251,8 @@ func (w *workup) notFound(o *parttype.OvertoneLimit, windows []*fitted, r *verdi
 		return
 	}
 	least := math.Inf(1)
-	var width float64
 	for _, f := range windows {
-		s, b := w.observable(f, o.Definition, confidence)
-		if s < least {
-			least, width = s, b
-		}
+		least = math.Min(least, w.observable(f, o.Definition, confidence).suppression())
 	}
 	b := o.SuppressionDB
 	if math.IsInf(least, -1) || b.Min != nil && least < *b.Min || b.Max != nil && least <= *b.Max {
@@ -272,7 +260,15 @@ func (w *workup) notFound(o *parttype.OvertoneLimit, windows []*fitted, r *verdi
 		return
 	}
 	r.Unseen = &verdict.Unseen{AtLeast: least, Probability: confidence}
-	w.observability = append(w.observability, verdict.Observability{FromHz: low, ToHz: high, NarrowestWidthHz: width, SuppressionDB: least})
+	stated := least
+	if b.Min != nil {
+		stated = *b.Min
+	}
+	var width float64
+	for _, f := range windows {
+		width = math.Max(width, w.observable(f, o.Definition, confidence).narrowestHz(stated))
+	}
+	w.observability = append(w.observability, verdict.Observability{FromHz: low, ToHz: high, NarrowestWidthHz: width, SuppressionDB: stated})
 }
 
 // covered reports whether windows cover a band together; gap is the first frequency that they leave out.
@@ -292,50 +288,85 @@ func covered(windows []*fitted, low, high float64) (gap float64, ok bool) {
 // seenGain is the gain of log-likelihood from which the fit calls a response one (package resonance), twice the logarithm of the likelihood.
 const seenGain = 60.0
 
-// observable returns the largest suppression in decibels that a response of this window could have had and still be seen with a probability, and the
-// loaded width that it would have had. Minus infinity: not even the main mode itself would be seen.
+// sight is what a response in one window has to be to be seen with a probability.
 //
-// Height h and width B of the response follow from its resistance (responseHeight); L is that of the main mode, as all overtones of a plate have one.
+// Height h and width B of a response follow from its resistance (responseHeight); L is that of the main mode, as all overtones of a plate have one.
 // On a grid of step D at its worst place it has the energy
 //
 //	lambda = 2 (h/sigma)^2 E,   E = (pi B/2D) tanh(pi B/2D)
 //
-// and is seen with probability P when sqrt(lambda) >= sqrt(gain) + z(P).
-func (w *workup) observable(f *fitted, definition parttype.Definition, probability float64) (suppression, widthHz float64) {
+// and is seen with probability P when sqrt(lambda) >= sqrt(gain) + z(P). One wider than a third of the window is not told from its background,
+// and one that does not ring up within a dwell is not there.
+type sight struct {
+	known                       bool
+	gain, terminationOhm, noise float64 // of a sample
+	mainOhm, inductance         float64
+	definitionOhm               float64
+	stepHz, spanHz, dwell       float64
+	needed                      float64 // lambda
+}
+
+// observable returns the sight of a window.
+func (w *workup) observable(f *fitted, definition parttype.Definition, probability float64) sight {
 	s := f.sweep
-	n := s.Points()
 	low, high := s.SpanHz()
-	step := (high - low) / float64(n-1)
 	main := w.nominal.est.Unit().Modes[0]
-	noise := math.Max(f.est.Quality.NoiseRMS, network.SampleNoise(w.c.Calibration, s))
-	gain, termination, ok := w.responseHeight(f)
-	if !ok || !(noise > 0) {
-		return math.Inf(-1), 0
+	v := sight{
+		noise:   math.Max(f.est.Quality.NoiseRMS, network.SampleNoise(w.c.Calibration, s)),
+		mainOhm: main.ResistanceOhm, inductance: main.InductanceHenry, definitionOhm: definitionOhm(definition),
+		stepHz: (high - low) / float64(s.Points()-1), spanHz: high - low, dwell: s.Timing.Dwell.Seconds(),
+		needed: math.Pow(math.Sqrt(seenGain)+uncertainty.NormalQuantile(probability), 2),
 	}
-	needed := math.Pow(math.Sqrt(seenGain)+uncertainty.NormalQuantile(probability), 2)
-	seen := func(db float64) (bool, float64) {
-		ohm := (main.ResistanceOhm+definitionOhm(definition))*math.Pow(10, db/20) - definitionOhm(definition)
-		width := (ohm + termination) / (2 * math.Pi * main.InductanceHenry)
-		height := gain / (ohm + termination)
-		x := math.Pi * width / (2 * step)
-		if dwell := s.Timing.Dwell.Seconds(); dwell > 0 && dwell*math.Pi*width < 1 {
-			return false, width // it would not have rung up within a dwell
-		}
-		return 2*height*height/(noise*noise)*x*math.Tanh(x) >= needed, width
+	v.gain, v.terminationOhm, v.known = w.responseHeight(f)
+	v.known = v.known && v.noise > 0
+	return v
+}
+
+// response returns resistance and loaded width of a suppression in decibels.
+func (v *sight) response(db float64) (ohm, widthHz float64) {
+	ohm = (v.mainOhm+v.definitionOhm)*math.Pow(10, db/20) - v.definitionOhm
+	return ohm, (ohm + v.terminationOhm) / (2 * math.Pi * v.inductance)
+}
+
+// sees reports whether a suppression would have been seen.
+func (v *sight) sees(db float64) bool {
+	ohm, width := v.response(db)
+	if width > v.spanHz/3 || v.dwell > 0 && v.dwell*math.Pi*width < 1 {
+		return false
 	}
-	const most = 120.0
-	if ok, _ := seen(0); !ok {
-		return math.Inf(-1), 0
+	height := v.gain / (ohm + v.terminationOhm)
+	x := math.Pi * width / (2 * v.stepHz)
+	return 2*height*height/(v.noise*v.noise)*x*math.Tanh(x) >= v.needed
+}
+
+// suppression returns the largest suppression in decibels that would have been seen; minus infinity when not even the main mode itself would.
+func (v sight) suppression() float64 {
+	if !v.known || !v.sees(0) {
+		return math.Inf(-1)
 	}
-	below, above := 0.0, most
+	below, above := 0.0, 120.0
 	for range 60 {
-		middle := (below + above) / 2
-		if ok, _ := seen(middle); ok {
+		if middle := (below + above) / 2; v.sees(middle) {
 			below = middle
 		} else {
 			above = middle
 		}
 	}
-	_, widthHz = seen(below)
-	return below, widthHz
+	return below
+}
+
+// narrowestHz returns the narrowest response of a suppression that would have been seen, whatever its inductance: x tanh x = lambda sigma^2/(2 h^2).
+func (v sight) narrowestHz(db float64) float64 {
+	ohm, _ := v.response(db)
+	height := v.gain / (ohm + v.terminationOhm)
+	energy := v.needed * v.noise * v.noise / (2 * height * height)
+	low, high := 0.0, 1+energy
+	for range 80 {
+		if x := (low + high) / 2; x*math.Tanh(x) < energy {
+			low = x
+		} else {
+			high = x
+		}
+	}
+	return high * 2 * v.stepHz / math.Pi
 }

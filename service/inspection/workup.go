@@ -22,12 +22,12 @@ type workup struct {
 
 	nominal *fitted // the reading that the limits section is held against; nil: none
 	series  series
+	jump    *jump
 	ev      verdict.Evidence
 
 	drive         []verdict.DriveReading
 	modes         []verdict.ModeReading
 	observability []verdict.Observability
-	overtones     []overtoneFound
 	shunt         *verdict.Value
 	shuntQuantity *quantity
 	remarks       []string
@@ -50,6 +50,9 @@ func (w *workup) fit(ctx context.Context, b *bench) error {
 	}
 	if w.main >= 0 {
 		if err := fitOne(w.main, start); err != nil {
+			return err
+		}
+		if err := w.lookForJump(ctx, b, start); err != nil {
 			return err
 		}
 		start = expectedLike(w.fits[w.main], start)

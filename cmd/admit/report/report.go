@@ -28,6 +28,9 @@ func Record(w io.Writer, r *inspection.Record) error {
 	if j.Grade != "" {
 		p.line("        grade %s", j.Grade)
 	}
+	if j.Disposition == verdict.SetAside {
+		p.line("        set aside: no attempt is left")
+	}
 	p.section("Why", j.Reasons())
 	p.section("Next", j.Advice())
 	if len(j.Findings) > 0 {
@@ -37,6 +40,8 @@ func Record(w io.Writer, r *inspection.Record) error {
 		}
 	}
 	p.parameters(j)
+	p.levels(j)
+	p.modes(j)
 	p.budget(j)
 	p.section("Remarks", j.Remarks)
 	return p.err
