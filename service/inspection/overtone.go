@@ -285,9 +285,6 @@ func covered(windows []*fitted, low, high float64) (gap float64, ok bool) {
 	return at, at >= high
 }
 
-// seenGain is the gain of log-likelihood from which the fit calls a response one (package resonance), twice the logarithm of the likelihood.
-const seenGain = 60.0
-
 // sight is what a response in one window has to be to be seen with a probability.
 //
 // Height h and width B of a response follow from its resistance (responseHeight); L is that of the main mode, as all overtones of a plate have one.
@@ -295,7 +292,7 @@ const seenGain = 60.0
 //
 //	lambda = 2 (h/sigma)^2 E,   E = (pi B/2D) tanh(pi B/2D)
 //
-// and is seen with probability P when sqrt(lambda) >= sqrt(gain) + z(P). One wider than a third of the window is not told from its background,
+// and is seen with probability P when sqrt(lambda) >= sqrt(gain) + z(P). One wider than a tenth of the window is not told from its background,
 // and one that does not ring up within a dwell is not there.
 type sight struct {
 	known                       bool
@@ -331,7 +328,7 @@ func (v *sight) response(db float64) (ohm, widthHz float64) {
 // sees reports whether a suppression would have been seen.
 func (v *sight) sees(db float64) bool {
 	ohm, width := v.response(db)
-	if width > v.spanHz/3 || v.dwell > 0 && v.dwell*math.Pi*width < 1 {
+	if width > widestShare*v.spanHz || v.dwell > 0 && v.dwell*math.Pi*width < 1 {
 		return false
 	}
 	height := v.gain / (ohm + v.terminationOhm)

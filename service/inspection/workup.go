@@ -34,7 +34,7 @@ type workup struct {
 }
 
 // fit fits every sweep that shows the main mode or an overtone: the main one first, since the others are looked for from it.
-func (w *workup) fit(ctx context.Context, b *bench) error {
+func (w *workup) fit(ctx context.Context, b *bench) (err error) {
 	for i := range w.c.Sweeps {
 		if w.c.Sweeps[i].Role == sweep.Main {
 			w.main = i
@@ -70,7 +70,10 @@ func (w *workup) fit(ctx context.Context, b *bench) error {
 	w.readSeries()
 	for i := range w.c.Sweeps {
 		if s := &w.c.Sweeps[i]; s.Role == sweep.Overtone {
-			if err := fitOne(i, w.expectedOvertone(s, start)); err != nil {
+			if err = ctx.Err(); err != nil {
+				return err
+			}
+			if w.fits[i], err = w.fitOvertone(b, i, w.expectedOvertone(s, start)); err != nil {
 				return err
 			}
 		}

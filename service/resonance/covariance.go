@@ -85,7 +85,8 @@ func (f *Fitter) fillShape(est *Estimate, variance float64) bool {
 //
 //	shift = -(J'WJ)^-1 J'W (T_changed(Y_fit) - T(Y_fit))
 //
-// for the fitted unit, in the linearised fit. The reference clock moves fs alone.
+// for the fitted unit, in the linearised fit. The reference clock moves fs alone. The phase of the network keeps its share where a free phase
+// was fitted (phase.go).
 func (f *Fitter) systematic(est *Estimate) {
 	if f.request.ScaleUnknown {
 		f.clock(est)
@@ -119,6 +120,9 @@ func (f *Fitter) systematic(est *Estimate) {
 				shift[p] = response[k]
 			}
 		}
+		if est.Fitted[PhaseRad] && ofPhase(c) {
+			withoutPhase(&shift, &est.Statistical)
+		}
 		est.Systematic = append(est.Systematic, contribution(c.Name, c.Group, shift))
 	}
 	f.clock(est)
@@ -134,7 +138,7 @@ func (f *Fitter) clock(est *Estimate) {
 // known returns the model of the unit in a known network that is being fitted, itself or inside that of magnitudes.
 func (f *Fitter) known() *forward {
 	if f.problem == problem(&f.magnitude) {
-		return &f.magnitude.inner
+		return &f.magnitude.settled
 	}
 	return &f.forward
 }

@@ -62,6 +62,7 @@ func (f *Fitter) judge(est *Estimate, found bool) {
 	tolerated := f.activeTolerance() + 6*scatter
 	switch {
 	case f.tooFast(est, visible):
+	case f.turned(est):
 	case active > tolerated && f.plane.onePole():
 		est.State = CalibrationMismatch
 		est.Detail = fmt.Sprintf("the samples reach %.1f %% beyond what a passive unit can give: they do not belong to this calibration", 100*active)

@@ -12,9 +12,12 @@ import "math"
 // bias s^2/2y taken off. Minimising the sum of squares is maximum likelihood at any level, and the minimum's curvature the
 // information. Source: S. O. Rice, Mathematical analysis of random noise, Bell System Technical Journal 24 (1945) 46, section 3.10.
 //
-// It fits |T| of the settled model: with samples of 0 that model's residual is T but for a phase.
+// It fits |T| of an inner model: of the settled one, whose residual with samples of 0 is T but for a phase, or, in a network that is not
+// known, of power.
 type magnitude struct {
-	inner     forward
+	inner     problem
+	settled   forward
+	power     power
 	sample    []float64
 	deviation float64   // s
 	most      []float64 // u'
@@ -26,9 +29,14 @@ type magnitude struct {
 	zero, one []float64 // imaginary parts and scales of magnitudes
 }
 
-// prepare takes the magnitudes, and from the points the samples.
-func (m *magnitude) prepare(p *points, sample []float64) {
-	m.inner = forward{points: p}
+// prepare takes the magnitudes, and from the points the samples. scaleUnknown says that the network is not known.
+func (m *magnitude) prepare(p *points, sample []float64, scaleUnknown bool) {
+	m.settled = forward{points: p}
+	m.power.prepare(p)
+	m.inner = &m.settled
+	if scaleUnknown {
+		m.inner = &m.power
+	}
 	m.sample = append(m.sample[:0], sample...)
 	m.zero, m.one, m.slope = grown(m.zero, p.n), grown(m.one, p.n), grown(m.slope, p.n)
 	clear(m.zero)
@@ -41,9 +49,13 @@ func (m *magnitude) prepare(p *points, sample []float64) {
 	}
 }
 
+// leastOfNoise is the least level told from none, in standard deviations of one part of the noise.
+const leastOfNoise = 1e-6
+
 // setNoise sets s and what follows from it.
 func (m *magnitude) setNoise(deviation float64) {
 	m.deviation = deviation
+	m.power.least = leastOfNoise * deviation
 	n := len(m.sample)
 	m.most, m.least = grown(m.most, n), grown(m.least, n)
 	for i, y := range m.sample {
@@ -70,11 +82,15 @@ func (m *magnitude) parts() int                        { return 1 }
 func (m *magnitude) parameters() int                   { return m.inner.parameters() }
 func (m *magnitude) inFixture(params []float64) loaded { return m.inner.inFixture(params) }
 
-// start takes a pole of scanPower. Its height gives the loaded resistance where the background is small; C0 is the expected one, or what the
+// start takes a pole of scanPower. In a known network its height gives the loaded resistance where the background is small; C0 is the expected one, or what the
 // background can be if the network is one of transmission.
 func (m *magnitude) start(q pole, out []float64) {
+	if m.inner == problem(&m.power) {
+		m.power.start(q, out)
+		return
+	}
 	clear(out)
-	p := m.inner.points
+	p := m.settled.points
 	i := p.nearest(q.centreHz)
 	background := math.Max(real(q.background), 0)
 	height := math.Sqrt(math.Max(real(q.residue)+background, 1e-6*background))
@@ -182,7 +198,8 @@ func (m *magnitude) deviance(i int, u, v float64) float64 {
 // startMagnitude looks for the resonance of magnitude-only samples and leaves the best solution in f.best and in the workspace.
 func (f *Fitter) startMagnitude() bool {
 	m := &f.magnitude
-	m.prepare(&f.points, f.request.Sweep.Re)
+	m.prepare(&f.points, f.request.Sweep.Re, f.request.ScaleUnknown)
+	f.forward, f.shape = forward{points: &f.points}, shape{points: &f.points} // of no earlier sweep
 	m.expected = f.request.Expected.ShuntCapacitanceFarad
 	f.problem = m
 	f.best = solution{}
