@@ -35,8 +35,9 @@ func symbol(unit string) (text string, prefixed bool) {
 	return unit, false
 }
 
-// Format writes a value with its expanded uncertainty (k = 2), both in one unit with one prefix, to two figures of the uncertainty:
-// "48.20 ± 0.62 Ω". A standard uncertainty of 0 leaves six significant figures and no ±.
+// Format writes a value with its expanded uncertainty (k = 2), to two figures of the uncertainty: "48.20 ± 0.62 Ω". Both share one prefix,
+// unless the uncertainty is so small beside the value that it reads better with its own: "24.9940754 MHz ± 1.8 Hz". A standard
+// uncertainty of 0 leaves nine significant figures and no ±.
 func Format(v Value, unit string) string {
 	name, prefixed := symbol(unit)
 	power := 0
@@ -45,14 +46,16 @@ func Format(v Value, unit string) string {
 	}
 	scale := math.Pow(1000, float64(-power))
 	value, expanded := v.Value*scale, 2*v.StandardUncertainty*scale
-	var text string
-	if expanded > 0 && !math.IsInf(expanded, 0) {
-		decimals := decimalsFor(expanded)
-		text = number(value, decimals) + " ± " + number(expanded, decimals)
-	} else {
-		text = plain(value)
+	with := func(text string, power int) string { return strings.TrimRight(text+" "+prefixes[power]+name, " ") }
+	if !(expanded > 0) || math.IsInf(expanded, 0) {
+		return with(plain(value), power)
 	}
-	return strings.TrimRight(text+" "+prefixes[power]+name, " ")
+	text := number(value, decimalsFor(expanded))
+	if own := prefixPower(2 * v.StandardUncertainty); prefixed && own < power && expanded < 1e-4*math.Abs(value) {
+		small := 2 * v.StandardUncertainty * math.Pow(1000, float64(-own))
+		return with(text, power) + " ± " + with(number(small, decimalsFor(small)), own)
+	}
+	return with(text+" ± "+number(expanded, decimalsFor(expanded)), power)
 }
 
 // FormatBound writes a limit as a person gave it: shortest digits, with a prefix.

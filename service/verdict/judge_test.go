@@ -134,7 +134,7 @@ func TestFormat(t *testing.T) {
 		want string
 	}{
 		{Value{48.2, 0.31}, UnitOhm, "48.20 ± 0.62 Ω"},
-		{Value{24.99375e6, 0.04}, UnitHertz, "24.993750000 ± 0.000000080 MHz"},
+		{Value{24.99375e6, 0.04}, UnitHertz, "24.993750000 MHz ± 80 mHz"},
 		{Value{5.5e-15, 2.2e-17}, UnitFarad, "5.500 ± 0.044 fF"},
 		{Value{1.6e-12, 0.02e-12}, UnitFarad, "1.600 ± 0.040 pF"},
 		{Value{-3.21, 0.12}, UnitPPM, "−3.21 ± 0.24 ppm"},
