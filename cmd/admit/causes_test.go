@@ -68,10 +68,47 @@ func (b *bench) nominal(change func(m *crystal.Mode, u *crystal.Unit)) simulated
 	return simulated.Insert{Unit: u}
 }
 
-// TestEveryOutcome provokes pass, fail and each retest cause of the main sweep with simulated units of the whole scenario at 60 dB, through
-// the files and the command line: folder written, `admit judge` run, exit status and cause read.
+// limited puts sections behind the limits file of a case.
+func limited(t *testing.T, c *inspection.Case, sections string) *inspection.Case {
+	t.Helper()
+	part, err := parttype.Parse("part-type.yaml", append(append([]byte(nil), c.PartType.Source...), sections...))
+	if err != nil {
+		t.Fatal(err)
+	}
+	c.PartType = part
+	return c
+}
+
+// series measures a drive series of a tenth, the whole and a tenth of the drive level, the main sweep behind the second, and holds it against limits.
+func (b *bench) series(t *testing.T, in simulated.Insert) *inspection.Case {
+	t.Helper()
+	watt := b.unit.PartType.DriveLevelWatt
+	c := limited(t, b.measure(in), fmt.Sprintf(`drive:
+  levels: [%[1]g W, %[2]g W, %[1]g W]
+  resistance_ratio: {reference: nominal-level, max: 1.5}
+  frequency_shift_ppm: {max: 5}
+`, watt/10, watt))
+	c.Sweeps = nil
+	for step, level := range []float64{watt / 10, watt, watt / 10} {
+		c.Sweeps = append(c.Sweeps, b.station.MeasureAt(in, b.station.Window(201), sweep.Drive, step, b.station.SourcePowerFor(level)))
+		if step == 1 {
+			c.Sweeps = append(c.Sweeps, b.station.MeasureAt(in, b.station.Window(401), sweep.Main, 0, b.station.SourcePowerFor(level)))
+		}
+	}
+	return c
+}
+
+// provedElsewhere are causes that need what was measured of other units: package inspection proves them on the same scenario.
+var provedElsewhere = []verdict.Cause{verdict.TwoUnits, verdict.SameUnitAgain}
+
+// TestEveryOutcome provokes pass, fail and every retest cause with simulated units of the whole scenario at 60 dB, through the files and the
+// command line: folder written, `admit judge` run, exit status and cause read.
 func TestEveryOutcome(t *testing.T) {
 	same := func(*crystal.Mode, *crystal.Unit) {}
+	provoked := map[verdict.Cause]bool{}
+	for _, c := range provedElsewhere {
+		provoked[c] = true
+	}
 	for kind, k := range simulated.Scenario() {
 		for _, c := range []struct {
 			name  string
@@ -148,7 +185,53 @@ func TestEveryOutcome(t *testing.T) {
 					u.Modes = append(u.Modes, second)
 				}))
 			}, exitRetest, verdict.ModelMisfit},
+			{"swept too fast with a source that restarts", func(b *bench) *inspection.Case {
+				c := b.measure(b.nominal(same))
+				quick := sweep.Timing{Dwell: c.Sweeps[0].Timing.Dwell / 50, Averaging: c.Sweeps[0].Timing.Dwell / 200, Phase: sweep.PhaseRestarted}
+				c.Sweeps[0] = b.station.MeasureStepped(b.nominal(same), b.station.Window(401), quick)
+				return c
+			}, exitRetest, verdict.SweptTooFast},
+			{"contact that changes within the sweep", func(b *bench) *inspection.Case {
+				c := b.measure(b.nominal(same))
+				worse := b.nominal(same)
+				worse.ContactOhm = 0.4 * b.station.Kind.ResistanceOhm
+				later := b.station.MeasureAt(worse, b.station.Window(401), sweep.Main, 0, b.station.SourcePowerDBm)
+				g := b.station.Window(401)
+				cut := int(400 * (b.station.Kind.ResonanceHz() - g.StartHz) / (g.StopHz - g.StartHz)) // as it crosses the resonance
+				copy(c.Sweeps[0].Re[cut:], later.Re[cut:])
+				copy(c.Sweeps[0].Im[cut:], later.Im[cut:])
+				return c
+			}, exitRetest, verdict.UnstableContact},
+			{"temperature", func(b *bench) *inspection.Case {
+				c := limited(t, b.measure(b.nominal(same)), "temperature: {reference_c: 25, allowed_c: {min: 23, max: 27}}\n")
+				c.Begin.Temperature = &inspection.Temperature{Celsius: 29, StandardUncertainty: 0.2}
+				return c
+			}, exitRetest, verdict.TemperatureOutOfRange},
+			{"a drive series as it should be", func(b *bench) *inspection.Case { return b.series(t, b.nominal(same)) }, exitPass, ""},
+			{"high at the first low level", func(b *bench) *inspection.Case {
+				in := b.nominal(same)
+				in.Drive = &simulated.DriveLaw{SleepRatio: 2.5, WakeWatt: 0.3 * b.unit.PartType.DriveLevelWatt}
+				return b.series(t, in)
+			}, exitRetest, verdict.HighResistanceAtLowDrive},
+			{"the strong level first", func(b *bench) *inspection.Case {
+				c := b.series(t, b.nominal(same))
+				c.Sweeps[0], c.Sweeps[1] = c.Sweeps[1], c.Sweeps[0]
+				return c
+			}, exitRetest, verdict.DriveOrderBroken},
+			{"source level off", func(b *bench) *inspection.Case {
+				c := b.series(t, b.nominal(same))
+				c.Calibration.SourceLevelOffsetDB = -2
+				return c
+			}, exitRetest, verdict.DriveLevelMissed},
+			{"no window about an overtone", func(b *bench) *inspection.Case {
+				window := "order: 7"
+				if b.unit.PartType.VibrationMode != parttype.ThicknessShear {
+					window = "frequency_ratio: 6.27"
+				}
+				return limited(t, b.measure(b.nominal(same)), "overtones: [{"+window+", suppression_db: {min: 10}, definition: resistance-ratio}]\n")
+			}, exitRetest, verdict.SurveyTooCoarse},
 		} {
+			provoked[c.cause] = true
 			t.Run(k.PartType+"/"+c.name, func(t *testing.T) {
 				b := newBench(t, kind, uint64(kind)+7)
 				dir := filepath.Join(t.TempDir(), "unit")
@@ -168,6 +251,11 @@ func TestEveryOutcome(t *testing.T) {
 					t.Errorf("exit %d with %v, want %d with %q%s%v", code, causes, c.exit, c.cause, text.String(), j.RetestCauses)
 				}
 			})
+		}
+	}
+	for _, c := range verdict.Causes() {
+		if !provoked[c] {
+			t.Errorf("nothing provokes %s", c)
 		}
 	}
 }

@@ -30,7 +30,7 @@ type bent struct {
 	withPhase          bool
 	conductanceSiemens float64
 
-	moved, value []float64 // scratch of the derivatives
+	moved []float64 // scratch of the derivatives
 }
 
 // The parameters: offset of f from the start in loaded bandwidths, ln R, ln L, C0 over that of the start, a, b in loaded bandwidths, phase.
@@ -72,10 +72,22 @@ func (m *bent) shuntScale() float64 {
 	return math.Max(math.Abs(m.start.Value[resonance.ShuntCapacitanceFarad]), 0.1e-12)
 }
 
+// arm returns the admittance of the motional arm at a point and a power, and the resistance in it.
+func (m *bent) arm(i int, u *bentUnit, p float64) (arm complex128, ohm float64) {
+	f, fs := m.frequencyHz[i], u.resonanceHz+u.shiftHz*(p-1)
+	ohm = u.ohm * (1 + u.slope*(p-1))
+	return 1 / complex(ohm, 2*math.Pi*u.henry*(f-fs)*(f+fs)/f), ohm
+}
+
+// admittance returns that of the unit at a point and a power.
+func (m *bent) admittance(i int, u *bentUnit, p float64) complex128 {
+	arm, _ := m.arm(i, u, p)
+	return complex(m.conductanceSiemens, 2*math.Pi*m.frequencyHz[i]*u.farad) + arm
+}
+
 // at returns the sample of the model at a point, and the power in R1 for one volt of open voltage.
 func (m *bent) at(i int, u *bentUnit) (sample complex128, watt float64) {
-	f := m.frequencyHz[i]
-	shunt := complex(m.conductanceSiemens, 2*math.Pi*f*u.farad)
+	shunt := complex(m.conductanceSiemens, 2*math.Pi*m.frequencyHz[i]*u.farad)
 	termination := m.terms.C[i]
 	if termination == 0 {
 		termination = m.terminationOhm
@@ -83,8 +95,7 @@ func (m *bent) at(i int, u *bentUnit) (sample complex128, watt float64) {
 	var y complex128
 	p := 1.0
 	for range 40 {
-		ohm, fs := u.ohm*(1+u.slope*(p-1)), u.resonanceHz+u.shiftHz*(p-1)
-		arm := 1 / complex(ohm, 2*math.Pi*u.henry*(f-fs)*(f+fs)/f)
+		arm, ohm := m.arm(i, u, p)
 		y = shunt + arm
 		current := cmplx.Abs(arm / (1 + termination*y))
 		watt = current * current * ohm
@@ -94,26 +105,31 @@ func (m *bent) at(i int, u *bentUnit) (sample complex128, watt float64) {
 		}
 		p = next
 	}
-	return (m.terms.A[i] + m.terms.B[i]*y) / (1 + m.terms.C[i]*y), watt
+	return m.terms.Sample(i, y), watt
 }
 
-// Evaluate writes residuals and their derivatives, taken by differences: a bent trace is rare.
+// Evaluate writes residuals and their derivatives.
 func (m *bent) Evaluate(params, residual, jacobian []float64) {
-	m.residuals(params, residual)
+	differences(m.residuals, &m.moved, params, residual, jacobian)
+}
+
+// differences evaluates residuals and, where they are asked for, their derivatives by differences: traces that need such a model are rare. The parameters
+// are of order one.
+func differences(residuals func(params, residual []float64), moved *[]float64, params, residual, jacobian []float64) {
+	residuals(params, residual)
 	if jacobian == nil {
 		return
 	}
 	n := len(residual)
-	m.moved = append(m.moved[:0], params...)
-	m.value = append(m.value[:0], residual...)
+	*moved = append((*moved)[:0], params...)
 	const step = 1e-5
 	for k := range params {
-		m.moved[k] = params[k] + step
+		(*moved)[k] = params[k] + step
 		column := jacobian[k*n : (k+1)*n]
-		m.residuals(m.moved, column)
-		m.moved[k] = params[k]
+		residuals(*moved, column)
+		(*moved)[k] = params[k]
 		for i := range column {
-			column[i] = (column[i] - m.value[i]) / step
+			column[i] = (column[i] - residual[i]) / step
 		}
 	}
 }
@@ -139,8 +155,8 @@ const (
 // highest power in place of the linear one.
 func (b *bench) unbend(f *fitted, req *resonance.Request) {
 	est := f.est
-	suspect := est.State == resonance.Misfit || est.State == resonance.Found && (est.Quality.ReducedChiSquare > 1.2 || math.Abs(est.Quality.ResidualCorrelation) > 0.15)
-	if !suspect || !known(est) || !f.driven || !f.sweep.Quantity.Complex() || req.Terms.D != 1 || !(est.Quality.LoadedBandwidthHz > 0) {
+	suspect := est.State == resonance.Misfit || est.State == resonance.CalibrationMismatch || est.State == resonance.Found && (est.Quality.ReducedChiSquare > 1.2 || math.Abs(est.Quality.ResidualCorrelation) > 0.15)
+	if !suspect || !readable(est) || !f.driven || !f.sweep.Quantity.Complex() || req.Terms.D != 1 {
 		return
 	}
 	m := newBent(f, req)
@@ -169,13 +185,22 @@ func (b *bench) unbend(f *fitted, req *resonance.Request) {
 		}
 		left := math.Sqrt(2 * result.SumOfSquares / float64(max(1, result.DegreesOfFreedom)))
 		gain := float64(n) * math.Log(before/result.SumOfSquares)
-		response := math.Pow(10, est.Quality.SNRDecibel/20) * noiseOf(req, est)
-		white := req.NoiseRMS > 0 && left < bentLeftNoise*req.NoiseRMS || left < bentLeftShare*response
-		if gain > bentGain && white && m.unit(p).ohm > 0 {
+		if gain > bentGain && m.white(left, req) && m.unit(p).ohm > 0 {
 			m.take(f, req, &workspace, p, result, left)
 			return
 		}
 	}
+}
+
+// readable reports whether an estimate holds a unit that another model can be started from, whatever was thought of the trace.
+func readable(est *resonance.Estimate) bool {
+	return est.Value[resonance.ResonanceHz] > 0 && est.Quality.LoadedBandwidthHz > 0 && !est.ScaleUnknown
+}
+
+// white reports whether what a model leaves, by its rms, is noise.
+func (m *bent) white(left float64, req *resonance.Request) bool {
+	response := math.Pow(10, m.start.Quality.SNRDecibel/20) * noiseOf(req, &m.start)
+	return req.NoiseRMS > 0 && left < bentLeftNoise*req.NoiseRMS || left < bentLeftShare*response
 }
 
 // noiseOf returns the noise that the signal-to-noise ratio of an estimate is told by.

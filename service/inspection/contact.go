@@ -8,14 +8,11 @@ import (
 	"example.com/admit/service/verdict"
 )
 
-// contact looks whether R1 moves within the main sweep, or between sweeps at one level, by more than the contact does from one insertion to the next.
+// contact looks whether R1 moves between sweeps at one level by more than the contact does from one insertion to the next.
 // Levels that differ are left to the drive series, and a unit that it shows to depend on its drive is not looked at: its R1 moves for that reason.
 func (w *workup) contact() {
 	if w.dependsOnDrive() {
 		return
-	}
-	if j := w.jump; j != nil {
-		w.g.add(verdict.UnstableContact, "R1 moved from %.4g by %.3g Ω within the main sweep, about point %d; the contact explains %.2g Ω.", j.ohm, j.change, j.point, j.allowed)
 	}
 	if w.p.Drive == nil || !w.g.scale || w.series.broken != "" {
 		return

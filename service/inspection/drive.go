@@ -104,12 +104,29 @@ func (w *workup) withReference(r *verdict.Reading) bool {
 	if w.series.reference != nil {
 		return true
 	}
-	c := verdict.DriveLevelMissed
-	if w.series.high {
-		c = verdict.HighResistanceAtLowDrive
+	r.Note = "there is no reading at the drive level to compare with"
+	switch f := w.unsoundReference(); {
+	case f != nil:
+		r.SuspendedBy = append(r.SuspendedBy, w.suspendedBy(false, f)...)
+	case w.series.high:
+		r.SuspendedBy = append(r.SuspendedBy, verdict.HighResistanceAtLowDrive)
+	default:
+		r.SuspendedBy = append(r.SuspendedBy, verdict.DriveLevelMissed)
 	}
-	r.SuspendedBy, r.Note = append(r.SuspendedBy, c), "there is no reading at the drive level to compare with"
 	return false
+}
+
+// unsoundReference returns the sweep that should have been the reading at the drive level and gave none; nil when there is none of these.
+func (w *workup) unsoundReference() *fitted {
+	for k := range w.series.levels {
+		if l := &w.series.levels[k]; near(l.wanted, w.p.DriveLevelWatt, 1e-6) && l.fit != nil && !l.fit.sound() {
+			return l.fit
+		}
+	}
+	if w.main >= 0 && !w.fits[w.main].sound() {
+		return w.fits[w.main]
+	}
+	return nil
 }
 
 // ratioAt returns the resistance ratio of a level to the drive level.
@@ -242,7 +259,7 @@ func (w *workup) noteSeries() {
 	if len(missed) > 0 {
 		w.cause(verdict.NewCause(verdict.DriveLevelMissed, sentence(strings.Join(missed, "; "))))
 	}
-	if s.reference == nil && !s.high && len(missed) == 0 {
+	if s.reference == nil && !s.high && len(missed) == 0 && w.unsoundReference() == nil {
 		w.cause(verdict.NewCause(verdict.DriveLevelMissed, "There is no reading at the drive level to compare the others with."))
 	}
 }

@@ -73,7 +73,7 @@ func (b *bench) fit(c *Case, index int, expected resonance.Expected, g *gate) (*
 		return f, nil
 	}
 	b.fitter.Fit(&req, f.est)
-	if known(f.est) && !f.est.ScaleUnknown {
+	if readable(f.est) {
 		f.findLoudest(g, req.Terms)
 		if c.PartType.Drive != nil && s.Role != sweep.Overtone {
 			b.unbend(f, &req)

@@ -190,8 +190,7 @@ func TestLowDriveOverAttempts(t *testing.T) {
 		}
 	}
 	// A unit that was badly seated once and reads well afterwards passes.
-	bad := s.nominal(nil)
-	bad.ContactOhm = 100
+	bad := s.nominal(func(m *crystal.Mode, _ *crystal.Unit) { m.ResistanceOhm += 100 })
 	if r := s.take("TM0000002", s.series(bad)[:1]); causes(&r.Judgement) != string(verdict.HighResistanceAtLowDrive) || len(r.Judgement.Advice()) == 0 {
 		t.Errorf("badly seated: %s", told(&r.Judgement))
 	}

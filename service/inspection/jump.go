@@ -1,83 +1,137 @@
 package inspection
 
 import (
-	"context"
+	"fmt"
 	"math"
 
+	"example.com/admit/service/leastsquares"
+	"example.com/admit/service/network"
 	"example.com/admit/service/resonance"
-	"example.com/admit/service/sweep"
+	"example.com/admit/service/verdict"
 )
 
-// jump is a change of R1 in the middle of the main sweep.
-type jump struct {
-	point       int
-	ohm, change float64 // R1 before, and by how much it moved
-	allowed     float64
+// A contact that changes in the middle of a sweep puts another resistance in series with the unit from there on. The trace is that of no unit, and the fit
+// says so; but a unit with a step in its series resistance describes it to the noise, and tells the operator what to do: clean the contacts.
+
+// jumped is that model: one linear unit, and behind a point of the sweep a resistance in series with it.
+type jumped struct {
+	bent
+	cut    int
+	linear []float64 // scratch
 }
 
-// lookForJump looks, where the main sweep is no unit's, whether it is that of a unit whose contact changed on the way: cut at one point, both pieces
-// are of one resonance at one frequency, with two resistances. The piece before the cut and the one behind it are fitted by themselves, at a few
-// cuts; a second mode, or a bent trace, does not fall into two such pieces.
-func (w *workup) lookForJump(ctx context.Context, b *bench, start resonance.Expected) error {
-	main := w.fits[w.main]
-	if main.est.State != resonance.Misfit || !w.g.scale || main.sweep.Timing.Phase == sweep.PhaseRestarted {
+// The parameters are those of a bent trace up to the shunt capacitance, then the resistance in units of R1.
+const (
+	jumpResistance = bentSlope
+	jumpParameters = jumpResistance + 1
+)
+
+// Evaluate writes residuals and their derivatives.
+func (m *jumped) Evaluate(params, residual, jacobian []float64) {
+	differences(m.residuals, &m.moved, params, residual, jacobian)
+}
+
+func (m *jumped) residuals(params, residual []float64) {
+	m.linear = append(append(m.linear[:0], params[:jumpResistance]...), 0, 0)
+	u := m.unit(m.linear)
+	u.phase = 0
+	step := complex(params[jumpResistance]*u.ohm, 0)
+	for i, s := range m.sample {
+		y := m.admittance(i, &u, 1)
+		if i >= m.cut {
+			y /= 1 + step*y
+		}
+		d := s - m.terms.Sample(i, y)
+		residual[2*i], residual[2*i+1] = real(d), imag(d)
+	}
+}
+
+// Cuts tried, and the least change that is told of, in parts of the sweep.
+const (
+	jumpCuts  = 16
+	leastEdge = 12 // points on either side
+)
+
+// lookForJump looks whether the main sweep is that of a unit whose contact changed on the way. A unit that depends on its drive may wake in the middle of a
+// sweep, which looks the same: the drive series is judged first.
+func (w *workup) lookForJump(b *bench) error {
+	if w.main < 0 {
 		return nil
 	}
-	n := main.sweep.Points()
-	for eighth := 2; eighth <= 6; eighth++ {
-		if err := ctx.Err(); err != nil {
-			return err
+	main := w.fits[w.main]
+	est := main.est
+	suspect := est.State == resonance.Misfit || est.State == resonance.CalibrationMismatch
+	if !suspect || !readable(est) || !w.g.scale || w.g.solved == nil || !main.sweep.Quantity.Complex() || w.dependsOnDrive() {
+		return nil
+	}
+	if err := w.g.solved.Terms(&b.terms, main.sweep.FrequencyHz, main.sweep.Quantity); err != nil || b.terms.D != 1 {
+		return nil
+	}
+	req := resonance.Request{Terms: &b.terms, NoiseRMS: network.SampleNoise(w.c.Calibration, main.sweep)}
+	if cal := w.c.Calibration; cal != nil {
+		req.ClockOffset = cal.ReferenceClockOffsetPPM * 1e-6
+	}
+	m := &jumped{bent: *newBent(main, &req)}
+	n := len(m.sample)
+	residual := make([]float64, 2*n)
+	params := make([]float64, jumpParameters)
+	m.residuals(params, residual)
+	before := sumOfSquares(residual)
+	var workspace leastsquares.Workspace
+	try := func(cut int) leastsquares.Result {
+		m.cut = cut
+		clear(params)
+		return workspace.Fit(m, 2*n, params, leastsquares.Options{ComplexPairs: true, IterationLimit: 12})
+	}
+	cost := func(cut int) float64 {
+		if cut < leastEdge || cut > n-leastEdge {
+			return math.Inf(1)
 		}
-		cut := n * eighth / 8
-		before, err := b.fitPiece(w.c, w.main, 0, cut, start, w.g)
-		if err != nil {
-			return err
-		}
-		behind, err := b.fitPiece(w.c, w.main, cut, n, start, w.g)
-		if err != nil {
-			return err
-		}
-		if j := w.jumpBetween(before, behind); j != nil && (w.jump == nil || math.Abs(j.change) > math.Abs(w.jump.change)) {
-			j.point = cut
-			w.jump = j
-		}
+		return try(cut).SumOfSquares
+	}
+	best := leastCut(n, cost)
+	if best < leastEdge {
+		return nil
+	}
+	result := try(best)
+	left := math.Sqrt(2 * result.SumOfSquares / float64(max(1, result.DegreesOfFreedom)))
+	gain := 2 * float64(n) * math.Log(before/result.SumOfSquares)
+	ohm := math.Exp(est.Value[resonance.LogResistance] + params[bentResistance])
+	change := params[jumpResistance] * ohm
+	u := math.Sqrt(workspace.Covariance()[jumpResistance*jumpParameters+jumpResistance]*result.ResidualVariance) * ohm
+	allowed := w.contactAllows(verdict.Value{Value: change, StandardUncertainty: u})
+	if gain > bentGain && m.white(left, &req) && math.Abs(change) > allowed {
+		est.State = resonance.State(verdict.UnstableContact)
+		est.Detail = fmt.Sprintf("R1 changed from %.4g Ω by %.3g Ω within the main sweep, at point %d; the contact explains %.2g Ω", ohm, change, best, allowed)
 	}
 	return nil
 }
 
-// fitPiece fits the points from..to of a sweep.
-func (b *bench) fitPiece(c *Case, index, from, to int, start resonance.Expected, g *gate) (*fitted, error) {
-	piece := c.Sweeps[index]
-	piece.Grid = nil
-	piece.Timing.Dwell, piece.Timing.Averaging, piece.Timing.LeadIn = 0, 0, 0 // the second piece does not begin at rest
-	piece.FrequencyHz, piece.Re = piece.FrequencyHz[from:to], piece.Re[from:to]
-	if piece.Im != nil {
-		piece.Im = piece.Im[from:to]
+// leastCut returns the cut of least cost among n points: a coarse row of cuts, and from every dip in it downhill by halved steps.
+func leastCut(n int, cost func(cut int) float64) (best int) {
+	var row [jumpCuts + 1]float64
+	for k := range row {
+		row[k] = math.Inf(1)
+		if k > 0 && k < jumpCuts {
+			row[k] = cost(n * k / jumpCuts)
+		}
 	}
-	part := *c
-	part.Sweeps = []sweep.Sweep{piece}
-	return b.fit(&part, 0, start, g)
-}
-
-// jumpBetween returns the change of R1 between two pieces; nil where they are not two pieces of one unit, or do not differ.
-func (w *workup) jumpBetween(before, behind *fitted) *jump {
-	if !before.sound() || !behind.sound() {
-		return nil
+	least := math.Inf(1)
+	for k := 1; k < jumpCuts; k++ {
+		if row[k] > row[k-1] || row[k] > row[k+1] {
+			continue
+		}
+		at, low := n*k/jumpCuts, row[k]
+		for step := n / jumpCuts / 2; step > 0; step /= 2 {
+			for _, next := range [2]int{at - step, at + step} {
+				if c := cost(next); c < low {
+					at, low = next, c
+				}
+			}
+		}
+		if low < least {
+			best, least = at, low
+		}
 	}
-	shift, ok1 := frequencyShift(before, behind)
-	change, ok2 := resistanceChange(before, behind)
-	if !ok1 || !ok2 {
-		return nil
-	}
-	ppm, _, ok1 := shift.measured()
-	ohm, _, ok2 := change.measured()
-	width := before.est.Quality.LoadedBandwidthHz / before.est.Value[resonance.ResonanceHz] * 1e6
-	if !ok1 || !ok2 || math.Abs(ppm.Value) > repeatFactor*ppm.StandardUncertainty+0.05*width {
-		return nil
-	}
-	j := &jump{ohm: math.Exp(before.est.Value[resonance.LogResistance]), change: ohm.Value, allowed: w.contactAllows(ohm)}
-	if math.Abs(j.change) <= j.allowed {
-		return nil
-	}
-	return j
+	return best
 }

@@ -68,6 +68,12 @@ func (w *workup) mainReading(limit parttype.Limit) verdict.Reading {
 		switch {
 		case w.series.high:
 			r.SuspendedBy = append(r.SuspendedBy, verdict.HighResistanceAtLowDrive)
+		case w.series.endedEarly():
+			for k := range w.series.levels {
+				if f := w.series.levels[k].fit; f != nil && !f.sound() {
+					r.SuspendedBy = append(r.SuspendedBy, w.suspendedBy(absolute, f)...)
+				}
+			}
 		default:
 			w.cause(verdict.NewCause(verdict.DriveLevelMissed, fmt.Sprintf("No sweep was taken at the drive level of %s.", verdict.FormatBound(w.p.DriveLevelWatt, verdict.UnitWatt))))
 			r.SuspendedBy = append(r.SuspendedBy, verdict.DriveLevelMissed)

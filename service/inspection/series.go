@@ -30,6 +30,19 @@ type level struct {
 // usable reports whether a reading of the level can be taken.
 func (l *level) usable() bool { return l.fit.sound() && l.missed == "" }
 
+// endedEarly reports whether a station had a reason to end its sweeps before the main one: a first level out of limit, or a sweep that shows no unit.
+func (s *series) endedEarly() bool {
+	if s.high {
+		return true
+	}
+	for k := range s.levels {
+		if f := s.levels[k].fit; f != nil && !f.sound() {
+			return true
+		}
+	}
+	return false
+}
+
 // readSeries puts the drive sweeps in their places, looks at their order and their levels, and finds the readings at the drive level of the part
 // type: the one that levels are compared with, and the one that the limits section is held against.
 func (w *workup) readSeries() {

@@ -24,6 +24,13 @@ type Desk struct {
 	Clock        Clock
 	Observer     Observer
 	Software     string // revision, kept with every record
+
+	programmes programmes
+}
+
+// HeardBy returns a desk like this one with another observer.
+func (d *Desk) HeardBy(o Observer) *Desk {
+	return &Desk{Judge: d.Judge, Recorder: d.Recorder, Recollection: d.Recollection, Catalogue: d.Catalogue, Clock: d.Clock, Observer: o, Software: d.Software}
 }
 
 // Session is one inspection on its way in. It is used by one goroutine.

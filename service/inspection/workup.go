@@ -22,7 +22,6 @@ type workup struct {
 
 	nominal *fitted // the reading that the limits section is held against; nil: none
 	series  series
-	jump    *jump
 	ev      verdict.Evidence
 
 	drive         []verdict.DriveReading
@@ -52,9 +51,6 @@ func (w *workup) fit(ctx context.Context, b *bench) (err error) {
 		if err := fitOne(w.main, start); err != nil {
 			return err
 		}
-		if err := w.lookForJump(ctx, b, start); err != nil {
-			return err
-		}
 		start = expectedLike(w.fits[w.main], start)
 	}
 	for i := range w.c.Sweeps {
@@ -68,6 +64,9 @@ func (w *workup) fit(ctx context.Context, b *bench) (err error) {
 		}
 	}
 	w.readSeries()
+	if err := w.lookForJump(b); err != nil {
+		return err
+	}
 	for i := range w.c.Sweeps {
 		if s := &w.c.Sweeps[i]; s.Role == sweep.Overtone {
 			if err = ctx.Err(); err != nil {
@@ -107,7 +106,7 @@ func (w *workup) judge() (verdict.Judgement, error) {
 		AttemptsUsed: w.c.Background.AttemptsUsed, Uncounted: w.c.Begin.Purpose != Production && w.c.Begin.Purpose != "",
 	}
 	w.driveLimits()
-	if w.main < 0 && !w.series.high {
+	if w.main < 0 && !w.series.endedEarly() {
 		return verdict.Judgement{}, mainMissing(0)
 	}
 	// The order of the part type: limits, drive, overtones.

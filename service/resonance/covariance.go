@@ -11,7 +11,7 @@ import (
 // with it, else from the residual, sum |r|^2/(2N - p), which is the instrument's figure scaled by chi^2. Residuals that hang together
 // carry fewer observations than there are points: the covariance is multiplied by the sum of their correlations at all lags,
 // 1 + 2 (rho1 + rho2 + ...), the factor for a mean of correlated readings; where noise hides them from point to point, as means over
-// half a loaded width show them.
+// half a loaded width and a whole one show them.
 // false if the sweep does not determine some parameter at all.
 func (f *Fitter) fill(est *Estimate) bool {
 	m, b := f.known(), &f.best
@@ -32,10 +32,7 @@ func (f *Fitter) fill(est *Estimate) bool {
 	if f.seen.significant() {
 		f.seen.accumulate(f.pairs)
 	}
-	low, high := f.points.span()
-	step := (high - low) / float64(f.points.n-1)
-	length := int(math.Min(b.loaded.halfHz/step, float64(f.points.n)/8))
-	variance *= math.Max(f.seen.memory, f.seen.blocks(f.pairs, length))
+	variance *= math.Max(f.seen.memory, f.together())
 	covariance := f.workspace.Covariance()
 	if f.request.ScaleUnknown {
 		return f.fillShape(est, variance)
@@ -61,6 +58,19 @@ func (f *Fitter) fill(est *Estimate) bool {
 	}
 	est.Value[ResonanceHz] += f.points.referenceHz
 	return bounded
+}
+
+// together returns the factor by which residuals that noise hides from point to point hang together over longer ways: the larger of what means over
+// half a loaded half-power width and over a whole one show, or 1. The longer sees what a weak response a few widths away leaves.
+func (f *Fitter) together() float64 {
+	low, high := f.points.span()
+	step := (high - low) / float64(f.points.n-1)
+	factor := 1.0
+	for _, width := range [...]float64{f.best.loaded.halfHz, 2 * f.best.loaded.halfHz} {
+		length := int(math.Min(width/step, float64(f.points.n)/8))
+		factor = math.Max(factor, f.seen.blocks(f.pairs, length))
+	}
+	return factor
 }
 
 // fillShape writes what a sweep in an unknown network tells: fs, and Q as the inductance that it belongs to at one ohm, L1 = 1/(4 pi half).
@@ -89,6 +99,7 @@ func (f *Fitter) fillShape(est *Estimate, variance float64) bool {
 // was fitted (phase.go).
 func (f *Fitter) systematic(est *Estimate) {
 	if f.request.ScaleUnknown {
+		f.unknownNetwork(est)
 		f.clock(est)
 		return
 	}

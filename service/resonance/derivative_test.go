@@ -93,6 +93,11 @@ func TestDerivatives(t *testing.T) {
 			steps := []float64{1e-3 * bw, 1e-3, 1e-3, 1e-3, 1e-3, 1e-3, 1e-3, 1e-3, 1e-3}[:m.parameters()]
 			derivatives(t, p.name+" shape", &m, params, steps, 2*points.n)
 		}
+		var m power
+		m.prepare(&points)
+		params := []float64{0.2 * bw, math.Log(bw / 3), 0.3, -0.4, 0.5, 0.03}
+		steps := []float64{1e-3 * bw, 1e-3, 1e-3, 1e-3, 1e-3, 1e-3}
+		derivatives(t, p.name+" power", &m, params, steps, 2*points.n)
 	}
 }
 

@@ -62,7 +62,8 @@ type Derived [Derivations]Quantity
 
 // Derive computes the derived quantities of an estimate with their uncertainties. Values are exact functions of the fitted circuit; the law of
 // propagation of uncertainty (JCGM 100, 5.1 and 5.2; JCGM 102 for the matrices) is taken with derivatives of those same functions, by
-// central differences over the range in which each parameter lies. With an unknown scale only fs, Q and the deviation of fs are defined.
+// central differences over the range in which each parameter lies. With an unknown scale only fs, Q and the deviation of fs are defined,
+// and they are those of the resonator as the network loads it.
 func Derive(est *Estimate, c Conditions) (d Derived) {
 	values := circuitValues(&est.Value, &c, est.ScaleUnknown)
 	for k := range d {

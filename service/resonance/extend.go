@@ -9,7 +9,8 @@ import "math"
 //     for that: the smallest error of the model would be blown up by the inverse of that part;
 //  2. it is significant: the likelihood gains more than leastGain (five standard deviations), so that in a million sweeps without
 //     it none loses precision to it;
-//  3. it explains: of what is systematic in the residual it takes away at least a third. A neighbouring mode is not mopped up by a phase.
+//  3. it explains: of what is systematic in the residual it takes away at least a third, and where noise hides that from point to point nothing
+//     is left that hangs together over a loaded width. A neighbouring mode is not mopped up by a phase.
 //
 // A phase left out is still reported with its standard deviation (Quality.FreePhaseRad), so that drift of the reference plane can be named.
 const (
@@ -88,7 +89,7 @@ func (f *Fitter) refit(p Parameter) bool {
 	}
 	if f.solve(next, threshold, finalIterations) {
 		before, left := seen.systematic(), f.seen.systematic()
-		explained := !seen.significant() || left*left < before*before*(1-leastExplained)
+		explained := !seen.significant() && f.together() == 1 || left*left < before*before*(1-leastExplained)
 		if f.seen.gain(seen.rms*seen.rms, f.seen.rms*f.seen.rms) > leastGain/2 && explained {
 			f.best = *next
 			return true

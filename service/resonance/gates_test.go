@@ -93,8 +93,9 @@ func TestOutside(t *testing.T) {
 				}
 				off := est.Value[ResonanceHz] - p.unit.fs
 				if c.beyond > 10 {
+					off = est.Quality.LoadedResonanceHz - p.unit.fs
 					// Where the noise leaves the distance open it is what the expected unit makes of the slope, or left out.
-					if v := est.Value[ResonanceHz]; v != 0 && (v < frequencies[400] || math.Abs(off) > 50*bw) {
+					if v := est.Quality.LoadedResonanceHz; v != 0 && (v < frequencies[400] || math.Abs(off) > 50*bw) {
 						t.Errorf("%s, %g bandwidths beyond the edge: off by %.1f bandwidths", p.name, c.beyond, off/bw)
 					}
 					continue

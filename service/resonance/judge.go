@@ -21,9 +21,10 @@ const (
 	activeOfLargest = 0.05
 
 	// Systematic residual, as a share of the response seen, that no crystal unit in this network leaves: at once, and where the noise is
-	// known to be far below it.
+	// known to be far below it. The latter is what an arm 27 dB down leaves from a few loaded bandwidths away. It moves R1 by about twice the
+	// share, and the covariance, widened for it, grows to several percent: the answer would be about the noise, which it is not.
 	misfitShare          = 0.04
-	misfitShareOfKnown   = 0.01
+	misfitShareOfKnown   = 0.006
 	misfitChiSquare      = 25.0
 	scatterOverNoise     = 10.0 // residual over the receiver's noise that is no longer noise, where it is also
 	scatterShare         = 0.05 // this share of the response
@@ -31,9 +32,18 @@ const (
 
 	leastCapacitanceFarad = -0.5e-12 // a shunt capacitance clearly below is none, whatever the open standard was off by
 
+	// What no crystal unit has, by orders of magnitude: units lie between an ohm and some hundred kilohm. Such values come of admittances
+	// called impedances, or the reverse.
+	leastResistanceOhm = 1e-2
+	mostResistanceOhm  = 1e8
+
 	// A resonance counts as inside the sweep up to this many half widths beyond its edge: as long as the sweep reaches about the half-power
 	// point, R1 and L1 stand on more than a tail.
 	stillInside = 1.2
+
+	// mostSNRDecibel is the most that is claimed. No receiver resolves 1e-8 of its range; beyond, the figure is that of the arithmetic, or
+	// of the digits that the samples were written with.
+	mostSNRDecibel = 160.0
 
 	// Standard deviations beyond which parameters cannot be told: of ln R1 and ln L1, and of fs in loaded bandwidths.
 	mostDeviation = 0.5
@@ -67,15 +77,20 @@ func (f *Fitter) judge(est *Estimate, found bool) {
 		est.State = CalibrationMismatch
 		est.Detail = fmt.Sprintf("the samples reach %.1f %% beyond what a passive unit can give: they do not belong to this calibration", 100*active)
 	case f.misfit(est, visible, active > tolerated):
+	case bounded && f.otherQuantity(est):
 	case l.centreHz < low-stillInside*l.halfHz || l.centreHz > high+stillInside*l.halfHz:
 		f.outside(est, &z, low, high)
+		if !bounded || f.undetermined(est) {
+			forget(est)
+		}
 	case f.implausible(est):
 	case !bounded || f.undetermined(est):
 		est.State = TooNoisy
-		est.Detail = fmt.Sprintf("a resonance near %.7g MHz, but its parameters cannot be told: %.1f dB over the noise, u(R1) %.0f %%, u(L1) %.0f %%",
-			est.Value[ResonanceHz]/1e6, q.SNRDecibel, 100*deviation(est, LogResistance), 100*deviation(est, LogInductance))
+		est.Detail = fmt.Sprintf("a resonance near %s, but its parameters cannot be told: it stands %.0f dB over the noise, too little for this sweep",
+			megahertz(est.Value[ResonanceHz]), q.SNRDecibel)
 	default:
 		est.State = Found
+		f.remark(est, visible)
 	}
 }
 
@@ -100,11 +115,8 @@ func (f *Fitter) describe(est *Estimate) (visible float64) {
 	}
 	freedom := math.Max(float64(f.seen.parts*f.seen.points-f.problem.parameters()), 1)
 	q.NoiseRMS = math.Sqrt(2 * f.seen.sumOfSquares / freedom)
-	noise := q.NoiseRMS
-	if f.request.NoiseRMS > 0 {
-		noise = f.request.NoiseRMS
-	}
-	q.SNRDecibel = decibel(visible / math.Max(noise, f.floor))
+	noise := math.Max(q.NoiseRMS, f.request.NoiseRMS) // what is stated may be wrong either way
+	q.SNRDecibel = math.Min(decibel(visible/math.Max(noise, f.floor)), mostSNRDecibel)
 	q.ResidualCorrelation = f.seen.correlation
 	q.ResidualOverPeak = f.seen.rms / visible
 	q.WildPoints = f.seen.wild
@@ -165,11 +177,23 @@ func (f *Fitter) misfit(est *Estimate, visible float64, active bool) bool {
 			est.Detail += "; and part of the samples no passive unit could give"
 		}
 	case known > 0 && f.seen.noise() > scatterOverNoise*known && f.seen.rms > scatterShare*visible:
-		est.Detail = fmt.Sprintf("the samples scatter %.0f times more than the receiver's noise, %.0f %% of the response", f.seen.noise()/known, 100*f.seen.rms/visible)
+		est.Detail = fmt.Sprintf("the samples scatter %s times more than the receiver's noise, %.0f %% of the response", times(f.seen.noise()/known), 100*f.seen.rms/visible)
 	default:
 		return false
 	}
 	est.State = Misfit
+	return true
+}
+
+// otherQuantity says that the resistance is none of a crystal unit, wherever the resonance lies, and why that may be. No circuit is given.
+func (f *Fitter) otherQuantity(est *Estimate) bool {
+	r1, factor := math.Exp(est.Value[LogResistance]), math.Exp(3*deviation(est, LogResistance))
+	if f.request.ScaleUnknown || r1*factor >= leastResistanceOhm && r1/factor <= mostResistanceOhm {
+		return false
+	}
+	est.State = Misfit
+	est.Detail = fmt.Sprintf("a motional resistance of %s is that of no crystal unit: the sweep may be of another quantity than stated", prefixed(r1, "Ω", 2))
+	forget(est)
 	return true
 }
 
@@ -181,9 +205,9 @@ func (f *Fitter) implausible(est *Estimate) bool {
 	case f.best.result.Status == leastsquares.NotConverged && f.best.result.Offset > 0.1:
 		est.Detail = "no circuit of one crystal unit could be fitted to the samples"
 	case quality*(1-3*deviation(est, LogResistance)) > mostQualityFrequency:
-		est.Detail = fmt.Sprintf("Q of %.3g at %.6g MHz is beyond what quartz allows", quality/fs, fs/1e6)
+		est.Detail = fmt.Sprintf("a Q of %s at %s is beyond what quartz allows", plain(quality/fs, 3), megahertz(fs))
 	case c0 < leastCapacitanceFarad-5*deviation(est, ShuntCapacitanceFarad) && !f.points.impedance && !f.request.ScaleUnknown:
-		est.Detail = fmt.Sprintf("the shunt capacitance comes out negative, %.2f pF", c0*1e12)
+		est.Detail = fmt.Sprintf("the shunt capacitance comes out negative, %s", prefixed(c0, "F", 2))
 	default:
 		return false
 	}
@@ -209,8 +233,13 @@ func (f *Fitter) outside(est *Estimate, z *null, low, high float64) {
 	if l.centreHz < low {
 		side = "below"
 	}
-	est.Detail = fmt.Sprintf("the sweep shows the tail of a resonance at about %.7g MHz (standard uncertainty %.2g Hz), %.3g Hz %s its edge",
-		est.Value[ResonanceHz]/1e6, deviation(est, ResonanceHz), distance, side)
+	est.Detail = fmt.Sprintf("the sweep shows the tail of a resonance at about %s (standard uncertainty %s), %s %s its edge",
+		megahertz(est.Value[ResonanceHz]), prefixed(deviation(est, ResonanceHz), "Hz", 2), prefixed(distance, "Hz", 3), side)
+}
+
+// forget takes the numbers of a circuit out of an estimate that cannot tell them.
+func forget(est *Estimate) {
+	est.Value, est.Fitted, est.Statistical, est.Systematic = [Parameters]float64{}, [Parameters]bool{}, Matrix{}, est.Systematic[:0]
 }
 
 // nothing says what a sweep shows in which no resonance was found.
@@ -251,11 +280,11 @@ func (f *Fitter) nothing(est *Estimate, z *null) {
 		est.State = Shorted
 		est.Detail = "the whole sweep is near a short"
 		if f.parts() == 2 {
-			est.Detail = fmt.Sprintf("the whole sweep is near a short: |Z| about %.3g ohm", cmplx.Abs(1/y))
+			est.Detail = fmt.Sprintf("the whole sweep is near a short: |Z| about %s", prefixed(cmplx.Abs(1/y), "Ω", 2))
 		}
 	case known > 0 && noise > scatterOverNoise*known && relative > activeTolerance:
 		est.State = Misfit
-		est.Detail = fmt.Sprintf("no resonance, and the samples scatter %.0f times more than the receiver's noise", noise/known)
+		est.Detail = fmt.Sprintf("no resonance, and the samples scatter %s times more than the receiver's noise%s", times(noise/known), f.coarse())
 	case everything > misfitShare && z.seen.correlation > 0.5:
 		est.State = Misfit
 		est.Detail = fmt.Sprintf("neither one resonance nor none: what a capacitance leaves unexplained is systematic, %.1f %% of the range", 100*everything)
@@ -265,14 +294,18 @@ func (f *Fitter) nothing(est *Estimate, z *null) {
 	case f.tail(est, z, y):
 	case f.hidden(noise):
 		est.State = TooNoisy
-		est.Detail = fmt.Sprintf("the noise of a sample, %.2g, hides the unit that is expected here", noise)
+		est.Detail = fmt.Sprintf("the noise of a sample, %s of the range between open and short, hides the unit that is expected here", worded(100*relative, " %", 2))
 	case f.empty(y, deviation):
 		est.State = NoUnit
-		est.Detail = fmt.Sprintf("the whole sweep is near an open: %.3g pF", farad*1e12)
+		bound := math.Abs(farad) + 3*deviation/(2*math.Pi*p.referenceHz)
+		est.Detail = fmt.Sprintf("nothing in the contact head: less than %s", prefixed(raised(math.Max(bound, leastBoundFarad)), "F", 1))
 	default:
 		est.State = NoResonance
-		est.Detail = fmt.Sprintf("no resonance between %.7g and %.7g MHz: a capacitance of %.3g pF and a conductance of %.3g S and nothing else",
-			f.lowest()/1e6, f.highest()/1e6, farad*1e12, real(y))
+		est.Detail = fmt.Sprintf("no resonance between %s and %s: a capacitance of %s", plain(f.lowest()/1e6, 7), megahertz(f.highest()), prefixed(farad, "F", 3))
+		if g := math.Abs(real(y)); g > 5*deviation && g > leastLoss*cmplx.Abs(y) {
+			est.Detail += fmt.Sprintf(" with a conductance of %s", prefixed(real(y), "S", 3))
+		}
+		est.Detail += " and nothing else" + f.coarse()
 	}
 }
 
@@ -293,7 +326,7 @@ func (f *Fitter) nothingUnknown(est *Estimate, z *null) {
 		return
 	}
 	est.State = NoResonance
-	est.Detail = fmt.Sprintf("no resonance between %.7g and %.7g MHz", f.lowest()/1e6, f.highest()/1e6)
+	est.Detail = fmt.Sprintf("no resonance between %s and %s%s", plain(f.lowest()/1e6, 7), megahertz(f.highest()), f.coarse())
 }
 
 func (f *Fitter) lowest() float64  { low, _ := f.points.span(); return low + f.points.referenceHz }
@@ -332,7 +365,8 @@ func (f *Fitter) tail(est *Estimate, z *null, y complex128) bool {
 	if rise < leastShare*cmplx.Abs(y) {
 		return false
 	}
-	est.State = OutsideSweep
+	forget(est)
+	est.State, est.Quality.LoadedResonanceHz = OutsideSweep, 0
 	apparent := imag(y) / (2 * math.Pi * p.referenceHz)
 	side := 0.0
 	switch expected := f.request.Expected.ShuntCapacitanceFarad; {
@@ -348,13 +382,13 @@ func (f *Fitter) tail(est *Estimate, z *null, y complex128) bool {
 	case 1:
 		where = "above"
 	}
-	est.Detail = fmt.Sprintf("no resonance in the sweep, but the tail of one %s it: the susceptance rises by %.2g S, an apparent capacitance of %.3g pF",
-		where, rise, apparent*1e12)
+	est.Detail = fmt.Sprintf("no resonance in the sweep, but the tail of one %s it: the susceptance rises by %s, an apparent capacitance of %s",
+		where, prefixed(rise, "S", 2), prefixed(apparent, "F", 3))
 	if l1 := f.request.Expected.InductanceHenry; l1 > 0 {
 		distance := math.Sqrt((high - low) / (4 * math.Pi * l1 * rise))
-		est.Detail += fmt.Sprintf("; for a unit of the expected L1, about %.3g kHz from the middle", distance/1e3)
+		est.Detail += fmt.Sprintf("; for a unit of the expected L1, about %s from the middle", prefixed(distance, "Hz", 2))
 		if side != 0 {
-			est.Value[ResonanceHz] = p.referenceHz + side*distance
+			est.Quality.LoadedResonanceHz = p.referenceHz + side*distance
 		}
 	}
 	return true

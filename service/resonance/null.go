@@ -130,9 +130,11 @@ const (
 
 	// An empty fixture: a capacitance below this part of the expected one, or below the plain figure where none is expected. Real
 	// units begin at 0.4 pF (0.42 pF of a 1.2 x 1.0 mm unit, Nordic Semiconductor nRF54 data sheet, crystal oscillator table).
-	emptyPart   = 0.25
-	emptyFarad  = 0.25e-12
-	mostStrange = 0.02 // share of the points that may lie outside and be called wild
+	emptyPart       = 0.25
+	emptyFarad      = 0.25e-12
+	leastBoundFarad = 0.01e-12 // no less is said of an empty one: what a contact head repeats to
+	leastLoss       = 0.01     // of the admittance: a smaller conductance is not worth a word
+	mostStrange     = 0.02     // share of the points that may lie outside and be called wild
 )
 
 // shorted says that the whole sweep lies near a short.

@@ -4,7 +4,7 @@
 //
 // The way of a sweep. points reduces each sample to a plane in which all networks look alike. plane finds a pole there by linear least squares,
 // or, where that does not convince, by laying templates over the samples; either is a start. The models are forward (a unit in a known
-// network, settled or, with memory.go, ringing), shape (a resonance in an unknown network) and magnitude (Rice distributed samples);
+// network, settled or, with memory.go, ringing), shape and power (a resonance in an unknown network, with and without phase) and magnitude (Rice distributed samples);
 // leastsquares fits them, with Huber weights only where wild points stand alone. extend adds a shunt conductance, a free phase or a factor
 // on the timing where the sweep asks for them. judge holds the outcome against what else the sweep could be, and covariance and systematic say
 // how well it is known. Derive goes on from the parameters to everything that follows from the circuit.
@@ -30,7 +30,7 @@ const (
 	NoUnit              State = "no_unit"                 // the whole sweep near an open
 	Shorted             State = "shorted"                 // the whole sweep near a short
 	NoResonance         State = "no_resonance"            // a capacitance and nothing else
-	OutsideSweep        State = "resonance_outside_sweep" // only the tail of a resonance: about where is in the estimate
+	OutsideSweep        State = "resonance_outside_sweep" // only the tail of a resonance: about where is in Quality, and in Value if the circuit can be told
 	TooNoisy            State = "too_noisy"               // something is there, but its parameters cannot be told
 	SweptTooFast        State = "swept_too_fast"          // the resonator still rang from earlier points
 	Misfit              State = "model_misfit"            // the samples are not those of a crystal unit in this network
@@ -66,7 +66,7 @@ type Request struct {
 	Contributions []network.Contribution // systematic influences on the terms
 	NoiseRMS      float64                // complex rms noise of one raw sample from the instrument; 0: unknown
 	Expected      Expected
-	ScaleUnknown  bool // fixture network unknown: a free complex gain stands in for the terms; only fs, Q and shape count
+	ScaleUnknown  bool // fixture network unknown: a free complex gain stands in for the terms; only fs, Q and shape count, as it loads them
 
 	ClockOffset      float64 // true frequency = stated frequency x (1 + ClockOffset)
 	ClockUncertainty float64 // its standard uncertainty; becomes the influence "reference_clock"
@@ -83,7 +83,7 @@ type Contribution struct {
 
 // Quality is how well the model describes the samples.
 type Quality struct {
-	SNRDecibel            float64 // peak of the main response over the noise of one reading
+	SNRDecibel            float64 // peak of the main response over the noise of one reading, the larger of stated and seen; 160 at most
 	NoiseRMS              float64 // of one raw sample, as the residual says
 	ReducedChiSquare      float64 // against the instrument's noise; NaN-free: 0 when that is unknown
 	ResidualCorrelation   float64 // lag-1 correlation of the complex residual
@@ -94,7 +94,7 @@ type Quality struct {
 	Gain                  float64 // log-likelihood gain over a unit without resonance
 	Points, WildPoints    int
 	Iterations            int
-	LoadedResonanceHz     float64 // where the fixture shows the resonance, and
+	LoadedResonanceHz     float64 // where the fixture shows the resonance (0: not known), and
 	LoadedBandwidthHz     float64 // how wide between its half-power points
 	Memory                bool    // the resonator still rang from earlier points, and the model says so
 	DwellSeconds          float64 // as stated, or as the samples have it where they show another; 0: unknown
@@ -103,14 +103,16 @@ type Quality struct {
 // Estimate is the outcome of one fit.
 type Estimate struct {
 	State  State
-	Detail string // in words with numbers, for a person: why it is not Found, or what is remarkable
+	Detail string // in words with numbers, for a person: why it is not Found, or, in whole sentences, what is remarkable
 
 	Value       [Parameters]float64
 	Statistical Matrix         // from the noise of this sweep
 	Systematic  []Contribution // by influence
 	Fitted      [Parameters]bool
 
-	ScaleUnknown bool // R1, L1, C0 carry no meaning; fs and Q do, those of the resonator as the network loads it
+	// ScaleUnknown: R1, L1, C0 carry no meaning. fs and Q do, those of the resonator as the network loads it: the unit's own Q is higher by
+	// a factor that the sweep does not tell, and fs carries the influence UnknownNetworkInfluence.
+	ScaleUnknown bool
 	Quality      Quality
 }
 

@@ -4,6 +4,7 @@ import (
 	"fmt"
 	"math"
 	"math/rand/v2"
+	"strings"
 	"testing"
 )
 
@@ -19,7 +20,7 @@ func (u truth) loadedBy(n fixture) (centreHz, quality float64) {
 // their covariance describes, whatever leaks past the unit; where they are not, no number is given.
 func TestMagnitudesOfUnknownNetwork(t *testing.T) {
 	rng := random(t, rand.Uint64())
-	trials := 60
+	trials := 40
 	if testing.Short() {
 		trials = 20
 	}
@@ -71,6 +72,42 @@ func TestMagnitudesOfUnknownNetwork(t *testing.T) {
 				if mean := s / float64(trials); mean > most || mean < 0.3/most {
 					t.Errorf("%s: mean square of error over standard deviation %.2f of quantity %d", name, mean, k)
 				}
+			}
+		}
+	}
+}
+
+// TestUnknownNetworkIsAnInfluence: the stated frequency reaches the unit's own fs, which the noise alone does not, and the answer says what its Q
+// is the Q of.
+func TestUnknownNetworkIsAnInfluence(t *testing.T) {
+	rng := random(t, rand.Uint64())
+	for _, p := range parts() {
+		bw := p.unit.bandwidth(p.in)
+		for _, magnitude := range []bool{false, true} {
+			req := noisy(measured(p.unit, p.in, grid(p.unit.fs, 5*bw, 401)), p.unit.peak(p.in)/decibels(80), rng)
+			if magnitude {
+				req = magnitudes(req)
+			}
+			req.Terms, req.ScaleUnknown = nil, true
+			var f Fitter
+			var est Estimate
+			f.Fit(req, &est)
+			d := Derive(&est, Conditions{})[MotionalResonance]
+			off := math.Abs(d.Value - p.unit.fs)
+			if u := d.StandardUncertainty(); est.State != Found || off > 2*u || u > bw {
+				t.Errorf("%s: %s %q, fs off by %g Hz at a standard uncertainty of %g Hz", p.name, est.State, est.Detail, off, u)
+			}
+			share := 0.0
+			for _, s := range est.Budget(nil, &d) {
+				if s.Name == UnknownNetworkInfluence {
+					share = s.StandardUncertainty
+				}
+			}
+			if least := bw / 2 * math.Tan(10*math.Pi/180); share < 0.99*least {
+				t.Errorf("%s: the unknown network has a share of %g Hz, at least %g Hz", p.name, share, least)
+			}
+			if !strings.Contains(est.Detail, "as the network loads it") {
+				t.Errorf("%s: the loaded Q is not named: %q", p.name, est.Detail)
 			}
 		}
 	}

@@ -52,3 +52,12 @@ func rounded(value float64, digits int) float64 {
 	}
 	return r
 }
+
+// raised returns the next value of one significant digit above: 0.0432 is less than 0.05.
+func raised(value float64) float64 {
+	if !(value > 0) || math.IsInf(value, 0) {
+		return value
+	}
+	decade := math.Pow(10, math.Floor(math.Log10(value)))
+	return math.Ceil(value/decade*(1-1e-12)) * decade
+}

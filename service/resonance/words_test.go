@@ -15,6 +15,8 @@ func TestWords(t *testing.T) {
 		{worded(88, " %", 2), "88 %"},
 		{worded(-5.004, "°", 3), minus + "5°"},
 		{megahertz(24.9940763e6), "24.99408 MHz"},
+		{prefixed(raised(0.0432e-12), "F", 1), "50 fF"},
+		{prefixed(raised(1e-14), "F", 1), "10 fF"},
 		{times(1.3e5), "130000"},
 		{times(186), "190"},
 	} {

@@ -66,8 +66,7 @@ func (i *inspect) run() error {
 	if err := i.begin(); err != nil {
 		return err
 	}
-	// No sweep is asked for: the fixture follows its own programme.
-	if err := i.send(&pb.InspectResponse{Message: &pb.InspectResponse_Plan{Plan: &pb.SweepPlan{}}}); err != nil {
+	if err := i.send(&pb.InspectResponse{Message: &pb.InspectResponse_Plan{Plan: wire.PlanToProto(i.session.Programme())}}); err != nil {
 		return err
 	}
 	for {

@@ -86,10 +86,9 @@ func New(o Options) (*Server, error) {
 	if err := board.Seed(context.Background(), o.Archive); err != nil {
 		return nil, fmt.Errorf("the newest record of each station: %w", err)
 	}
-	desk := *o.Desk
-	desk.Observer = audience{board, o.Desk.Observer}
+	desk := o.Desk.HeardBy(audience{board, o.Desk.Observer})
 	s := &Server{
-		o: o, desk: &desk, log: o.Log, board: board, health: health.NewServer(), inward: newInwardListener(),
+		o: o, desk: desk, log: o.Log, board: board, health: health.NewServer(), inward: newInwardListener(),
 		budget: budget{most: int64(o.MaxPoints)},
 		hurry:  make(chan struct{}),
 	}

@@ -32,6 +32,9 @@ func (v *Surveyor) detect() {
 	for v.rounds = 1; v.rounds <= mostRounds; v.rounds++ {
 		v.reconsider()
 		v.look()
+		if v.now.modes > 0 && !v.samples.unknown && v.leaveOut(true) {
+			v.look()
+		}
 		v.search()
 		n, near := v.choose(most - v.now.modes)
 		switch {
@@ -40,7 +43,7 @@ func (v *Surveyor) detect() {
 		case n > 0:
 			v.admit(v.batch[:n], near)
 			continue
-		case v.more || !v.extend() && !v.leaveOut():
+		case v.more || !v.extend() && !v.leaveOut(false):
 			return
 		}
 	}

@@ -24,7 +24,7 @@ func (v *Surveyor) extend() bool {
 	}
 	best, most := optional(-1), leastGain
 	for p := range optionals {
-		if m.has(p) || m.s.unknown && p != timeStretch || p == timeStretch && !m.memory {
+		if m.has(p) || m.s.unknown && p != timeStretch || m.s.impedance && p == freePhase || p == timeStretch && !m.memory {
 			continue
 		}
 		if gain := v.score(p); gain > most {
@@ -125,21 +125,28 @@ func (v *Surveyor) derivative(p optional, column []float64) {
 	}
 }
 
-// leaveOut takes points off that are wild and stand alone: neither noise nor any mode. false if there are none.
-func (v *Surveyor) leaveOut() bool {
+// leaveOut takes points off that are wild and stand alone: neither noise nor any mode. With against, only those that no mode could be: in a known
+// network a mode adds conductance. false if there are none.
+func (v *Surveyor) leaveOut(against bool) bool {
 	const (
 		wildLength = 6.0
 		mostWild   = 0.05
 	)
-	s := &v.samples
-	v.look()
+	s, m := &v.samples, &v.model
 	limit := wildLength * wildLength * v.variance
 	long := func(i int) bool {
 		return i >= 0 && i < s.n && v.residual[2*i]*v.residual[2*i]+v.residual[2*i+1]*v.residual[2*i+1] > limit
 	}
+	wild := func(i int) bool {
+		if !long(i) || long(i-1) || long(i+1) {
+			return false
+		}
+		// conj(weight) (model - sample): the conductance that the model has too much of, but for a positive factor.
+		return !against || real(m.weight[i])*v.residual[2*i]+imag(m.weight[i])*v.residual[2*i+1] > 0
+	}
 	found := 0
 	for i := range s.n {
-		if long(i) && !long(i-1) && !long(i+1) {
+		if wild(i) {
 			found++
 		}
 	}
@@ -147,7 +154,7 @@ func (v *Surveyor) leaveOut() bool {
 		return false
 	}
 	for i := range s.n {
-		if long(i) && !long(i-1) && !long(i+1) {
+		if wild(i) {
 			s.scale[i] = 0
 		}
 	}

@@ -130,6 +130,7 @@ func (m *model) Evaluate(params, residual, jacobian []float64) {
 const (
 	narrowestOfStep = 0.01 // half-width, in steps of the sweep, below which no mode is followed: it lives between two points
 	widestOfSpan    = 2.0  // and above which it is none: in spans of the sweep
+	mostStretch     = 0.2  // of the logarithm of a factor on all times: a source that is so far off was not described
 	furthestOfSpan  = 0.5  // how far beyond the edge a mode may lie
 )
 
@@ -137,6 +138,9 @@ const (
 func (m *model) exists(params []float64) bool {
 	s := m.s
 	span := s.span()
+	if math.Abs(m.value(params, timeStretch)) > mostStretch {
+		return false
+	}
 	for k := range m.modes {
 		p := params[m.at(k):]
 		// NaN is outside as well, here and below.
@@ -162,7 +166,7 @@ func (m *model) exists(params []float64) bool {
 
 // evaluateArms is the model in a known network. With g = 1/Z of each arm and h = dF/dY,
 //
-//	Y = G0 + j w C0 + sum g,    F = Y/(1 + C Y), h = 1/(1 + C Y)^2        (1/Y and -1/Y^2 where the sample is an impedance)
+//	Y = G0 + j w C0 + sum g,    F = Y/(1 + C Y),    h = 1/(1 + C Y)^2
 //	dF/dp = -h g^2 dZ/dp
 //
 // Loops run over one mode at a time: each writes three columns, and the next finds its inputs still in the cache.
@@ -201,14 +205,8 @@ func (m *model) evaluateArms(params, residual, jacobian []float64) {
 	}
 	turned := turn(-m.value(params, freePhase))
 	for i, y := range shunt {
-		var f, h complex128
-		if s.impedance {
-			f = reciprocal(y)
-			h = -f * f
-		} else {
-			u := reciprocal(1 + s.source[i]*y)
-			f, h = y*u, u*u
-		}
+		u := reciprocal(1 + s.source[i]*y)
+		f, h := y*u, u*u
 		if m.memory {
 			f += rung[i]
 		}
@@ -289,9 +287,6 @@ func (a *arm) admittance(offsetHz, inverse float64) complex128 {
 
 // seenBy returns the impedance that a mode beside the admittance y meets at a point: of network and all else, in ohm.
 func (m *model) seenBy(y complex128, i int) complex128 {
-	if m.s.impedance {
-		return reciprocal(y)
-	}
 	c := m.s.source[i]
 	return c * reciprocal(1+c*y)
 }
@@ -328,11 +323,7 @@ func (m *model) lobeOf(params []float64, mode int) lobe {
 
 // weightOf returns how much of the raw sample one siemens beside the admittance y makes at a point.
 func (m *model) weightOf(y complex128, i int) float64 {
-	k := m.s.scale[i]
-	if m.s.impedance {
-		return k / square(y)
-	}
-	return k / square(1+m.s.source[i]*y)
+	return m.s.scale[i] / square(1+m.s.source[i]*y)
 }
 
 // append adds a lobe to the parameters as one mode more. Of a known network the resistance that is left beside the impedance seen may come out

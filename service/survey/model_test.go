@@ -97,7 +97,7 @@ func TestDerivatives(t *testing.T) {
 				}
 				req.ScaleUnknown = unknown
 				m := prepared(req)
-				m.conductance, m.phase, m.stretched = !unknown, !unknown, memory
+				m.conductance, m.phase, m.stretched = !unknown, !unknown && n.d != 0, memory
 				if memory {
 					m.remember()
 				}
@@ -113,7 +113,9 @@ func TestDerivatives(t *testing.T) {
 					m.modes = len(u.modes)
 				} else {
 					p = paramsOf(m, u)
-					p[m.column(freePhase)] = 0.02
+					if m.phase {
+						p[m.column(freePhase)] = 0.02
+					}
 				}
 				name := fmt.Sprintf("%s, unknown %v, memory %v", n.name, unknown, memory)
 				rows := 2 * m.s.n

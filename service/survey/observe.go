@@ -117,15 +117,28 @@ func (v *Surveyor) narrowestSeen(span Span, from, to float64, behind int) (width
 	}
 	// From there upwards, until one is seen and, beside the mode that stands there, all wider ones are.
 	const finer = 1.05
+	enough := func(width float64) bool {
+		return v.energyOfWidth(width, &look)*v.leastShare(from, to, width, behind) >= energy*(1-1e-9)
+	}
 	seen := math.Inf(1)
 	for width := least; width < widestAsked*s.span(); width *= finer {
-		if v.energyOfWidth(width, &look)*v.leastShare(from, to, width, behind) < energy*(1-1e-9) {
+		if !enough(width) {
 			seen = math.Inf(1)
 			continue
 		}
 		seen = math.Min(seen, width)
 		if behind < 0 {
 			break
+		}
+	}
+	if seen > least && !math.IsInf(seen, 1) {
+		low := seen / finer // was not enough
+		for range 10 {
+			if middle := (low + seen) / 2; enough(middle) {
+				seen = middle
+			} else {
+				low = middle
+			}
 		}
 	}
 	settled = true

@@ -17,9 +17,9 @@ func (v *Surveyor) prove(k int) bool {
 	}
 	v.restore(&v.now)
 	l := v.model.lobeOf(v.now.params, k)
-	// A wide mode, or one at an edge, may be no more than another C0.
+	// A wide mode, or one at an edge, may be no more than another C0; so may one whose response is seen at an antiresonance only.
 	s := &v.samples
-	if l.halfHz < widestProved*s.span() && l.centreHz > s.lowHz && l.centreHz < s.highHz {
+	if !s.impedance && l.halfHz < widestProved*s.span() && l.centreHz > s.lowHz && l.centreHz < s.highHz {
 		own := v.gainOf(v.energyOf(v.now.params, k)) / v.hangs()
 		for j := range v.now.modes {
 			if j != k {

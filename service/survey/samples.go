@@ -6,13 +6,18 @@ import (
 	"example.com/admit/service/sweep"
 )
 
-// samples is a sweep made ready for fitting. With D = 1 a network gives T = A + k F, F = Y/(1 + C Y), k = B - A C, and where the sample is an
-// impedance (D = 0) T = B/C + k F, F = 1/Y, k = A/C. Samples are kept as F; a residual in F times |k| has the length of that of the raw
-// sample, so white noise stays white. All slices have one length; nothing is allocated once they have grown.
+// samples is a sweep made ready for fitting. With D = 1 a network gives T = A + k F, F = Y/(1 + C Y), k = B - A C. Samples are kept as F; a
+// residual in F times |k| has the length of that of the raw sample, so white noise stays white.
+//
+// Where the sample is an impedance (D = 0), T = B/C + k/Y, k = A/C, it is turned into the admittance, F = Y with C = 0, whose residual times
+// |k|/|Y|^2 has the length of that of the raw sample: a resonance is then a pole as in any other network, and not a dip beside the pole of an
+// antiresonance that may lie far outside. What that neglects is of second order in noise over impedance.
+//
+// All slices have one length; nothing is allocated once they have grown.
 type samples struct {
 	n           int
 	referenceHz float64 // frequencies are counted from here, so that f - fs keeps all its digits
-	impedance   bool    // F = 1/Y
+	impedance   bool    // the raw samples are impedances
 	unknown     bool    // of the network: F is the sample
 
 	frequencyHz, offsetHz []float64
@@ -87,6 +92,10 @@ func (s *samples) prepare(req *Request) {
 		s.raw[i], s.open[i] = sample*inverse, open*inverse
 		s.value[i] = s.raw[i] - s.open[i]
 		s.scale[i], s.source[i] = length(k), source
+		if s.impedance {
+			s.scale[i] *= square(s.value[i])
+			s.value[i] = reciprocal(s.value[i])
+		}
 		s.largest = math.Max(s.largest, length(sample))
 	}
 	timing := w.Timing

@@ -156,9 +156,6 @@ func (v *Surveyor) background(params []float64) []float64 {
 	}
 	for i, f := range s.value {
 		y := f * reciprocal(1-s.source[i]*f)
-		if s.impedance {
-			y = reciprocal(f)
-		}
 		v.scratch[i] = imag(y) / s.angular[i]
 	}
 	return append(params, median(v.scratch))
@@ -310,7 +307,11 @@ func (v *Surveyor) strongest() int {
 	best, most := -1, 0.0
 	for k := range v.now.modes {
 		l := v.model.lobeOf(v.now.params, k)
-		if r := v.visible(l); r > most {
+		r := v.visible(l)
+		if v.samples.impedance {
+			r = length(l.height) // the raw sample is largest at an antiresonance
+		}
+		if r > most {
 			best, most = k, r
 		}
 	}

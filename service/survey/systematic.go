@@ -177,13 +177,15 @@ func (v *Surveyor) prepareCircuit() {
 			c[0], c[1], c[2] = 1, 0, 0
 			continue
 		}
-		k := complex(1/s.scale[i], 0)
-		f := s.raw[i]*turned - s.open[i] + complex(v.residual[2*i], v.residual[2*i+1])*k
+		residual := complex(v.residual[2*i]/s.scale[i], v.residual[2*i+1]/s.scale[i])
 		if s.impedance {
-			c[0], c[1], c[2] = f, 1, cmplx.Conj(t.A[i]/t.C[i])*k
+			y := s.value[i] + residual
+			k := t.A[i] / t.C[i]
+			c[0], c[1], c[2] = 1, y, -cmplx.Conj(k)*y*y/complex(length(k)*square(y), 0)
 			continue
 		}
-		c[0], c[1], c[2] = 1-s.source[i]*f, f, cmplx.Conj(t.B[i]-t.A[i]*t.C[i])*k
+		f := s.raw[i]*turned - s.open[i] + residual
+		c[0], c[1], c[2] = 1-s.source[i]*f, f, cmplx.Conj(t.B[i]-t.A[i]*t.C[i])*complex(1/s.scale[i], 0)
 	}
 }
 
