@@ -27,7 +27,7 @@ const (
 	TemperatureOutOfRange    Cause = "temperature_out_of_range"
 )
 
-// kind of cause: what the operator is asked to do, and whether the station rather than the unit is to be mended.
+// remedy is what the operator is asked to do about a cause, and whether the station rather than the unit is to be mended.
 type remedy struct {
 	advice  string
 	station bool

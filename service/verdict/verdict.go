@@ -71,7 +71,8 @@ type RetestCause struct {
 	Station bool
 }
 
-// Main are the quantities of the main mode. Quantities that do not exist (no zero-phase frequency) have Exists false.
+// Main are the quantities of the main mode. Those that a unit may not have (without a zero-phase frequency) are pointers, nil where they do not
+// exist.
 type Main struct {
 	MotionalResonanceHz, MotionalResistanceOhm, MotionalInductanceHenry Value
 	MotionalCapacitanceFarad, ShuntCapacitanceFarad, QualityFactor      Value
@@ -154,7 +155,7 @@ type Judgement struct {
 	Grade         string
 	Findings      []Finding
 	RetestCauses  []RetestCause
-	Main          *Main // nil when no main sweep could be fitted; nil fields of meaning are zero when the scale is unknown
+	Main          *Main // nil when no main sweep could be fitted; with an unknown scale only frequencies and Q are set
 	ScaleUnknown  bool  // fixture network unknown: only frequencies and Q of Main carry meaning
 	Load          *Load
 	Drive         []DriveReading
