@@ -94,6 +94,11 @@ func (w *workup) mainReading(limit parttype.Limit) verdict.Reading {
 	q, note, ok := w.read(limit, est)
 	if ok {
 		value(&r, q, true)
+		if !w.g.scale && limit.Quantity == parttype.QualityFactor && !reachesLoaded(limit.Bounds, r.Measured.Value) {
+			c := verdict.NewCause(verdict.CalibrationMissing, "The fixture network is not known: the quality factor is that of the unit loaded by it, and the unit's own lies above.")
+			w.cause(c)
+			r.SuspendedBy = append(r.SuspendedBy, c.Cause)
+		}
 	} else if r.Note = note; len(r.SuspendedBy) == 0 {
 		// A unit that has no such quantity at all: not a part out of limit, a limit that does not fit the unit.
 		r.SuspendedBy = []verdict.Cause{verdict.ModelMisfit}
@@ -116,6 +121,12 @@ func needsOhms(l parttype.Limit) bool {
 		return l.Of != parttype.MotionalResonance
 	}
 	return true
+}
+
+// reachesLoaded reports whether the quality factor of the unit loaded by an unknown network settles a limit: the unit's own is higher, so that
+// a lower limit that is met with the load is met, and nothing else can be said.
+func reachesLoaded(b parttype.Bounds, loaded float64) bool {
+	return b.Max == nil && b.Min != nil && loaded >= *b.Min
 }
 
 // unitOf returns the unit of a quantity's limit.

@@ -10,7 +10,7 @@ import (
 // and on wide grids; and what is found is as good as the bound allows, but for what wild points cost.
 func TestNoneLost(t *testing.T) {
 	rng := random(t, rand.Uint64())
-	trials := 200
+	trials := 120
 	if testing.Short() {
 		trials = 40
 	}

@@ -139,7 +139,7 @@ func TestDetection(t *testing.T) {
 		}
 		// Beyond doubt the error is that of the joint fit; near the threshold only those are seen that noise has helped.
 		n := float64(len(got.deviations))
-		if low := 0.95 - 3.5*math.Sqrt(0.05*0.95/n) - 0.01; got.law > 0.999 && got.within() < low {
+		if low := 0.95 - 4.5*math.Sqrt(0.05*0.95/n); got.law > 0.999 && got.within() < low {
 			t.Errorf("%+v: %.3f of the suppressions within their 95 %% interval, want at least %.3f", c, got.within(), low)
 		}
 	}

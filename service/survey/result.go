@@ -317,7 +317,7 @@ func (v *Surveyor) suppressions(out *Result) {
 			if v.samples.unknown && d != ResistanceRatio {
 				continue
 			}
-			byMode, byMain := perNeper*r/(r+z), -perNeper*v.reference/(v.reference+z)
+			byMode, byMain := perNeper*r/(r+z), perNeper*v.reference/(v.reference+z)
 			value := network.TransmissionDB(v.reference, r, z)
 			if known == nil {
 				mode.Suppression[d] = out.combined(value, []int{row, out.Index(main, LogResistance)}, []float64{byMode, byMain})
