@@ -9,12 +9,22 @@ import (
 	"example.com/admit/service/sweep"
 )
 
-// settledTimeConstants is the dwell, in loaded time constants, from which the resonator counts as settled: what is left then moves fs by less
-// than 0.001 ppm.
+// settledTimeConstants is the wait at each frequency before averaging begins, in loaded time constants, from which the resonator counts as
+// settled: what is left then moves fs by less than 0.001 ppm. A sample that averages over the whole dwell has the ringing in it however long
+// the dwell is.
 const settledTimeConstants = 7.0
 
-// memoryTimeConstants is the dwell below which the memory of the resonator is put into the model where it can be.
+// memoryTimeConstants is the wait below which the memory of the resonator is put into the model where it can be.
 const memoryTimeConstants = 12.0
+
+// wait returns the time between a change of frequency and the beginning of averaging, in seconds; an averaging that is not stated is the
+// whole dwell.
+func wait(t sweep.Timing) float64 {
+	if t.Averaging == 0 {
+		return 0
+	}
+	return (t.Dwell - t.Averaging).Seconds()
+}
 
 // remembers says whether the resonator's memory can be modelled at all. A source that restarts its phase leaves it undefined, and samples
 // stated as admittances or impedances do not tell what the resonator was loaded with while it rang. Magnitudes are fitted settled.
@@ -29,7 +39,7 @@ func (f *Fitter) remembers() bool {
 func (f *Fitter) ringsAs(s *solution) bool {
 	t := f.request.Sweep.Timing
 	return !f.memory() && t.Dwell > 0 && t.Phase == sweep.PhaseContinuous && f.remembers() &&
-		t.Dwell.Seconds() < memoryTimeConstants*s.loaded.timeConstant()
+		wait(t) < memoryTimeConstants*s.loaded.timeConstant()
 }
 
 // rememberStated fits again with the memory of the resonator in the model if the dwell is stated and short, and the source's phase
@@ -235,12 +245,14 @@ func (f *Fitter) tooFast(est *Estimate, visible float64) bool {
 	t := f.request.Sweep.Timing
 	q := &est.Quality
 	explained := q.Memory && f.seen.systematic() <= misfitShare*visible
-	if t.Dwell <= 0 || explained || q.SettlingTimeConstants >= settledTimeConstants {
+	tau := f.best.loaded.timeConstant()
+	if t.Dwell <= 0 || explained || wait(t) >= settledTimeConstants*tau {
 		return false
 	}
-	needed := time.Duration(settledTimeConstants * f.best.loaded.timeConstant() * 1e9).Round(time.Microsecond)
+	needed := time.Duration(settledTimeConstants * tau * 1e9).Round(time.Microsecond)
 	est.State = SweptTooFast
-	est.Detail = fmt.Sprintf("a dwell of %v is %.2g loaded time constants; a settled sweep needs %v", t.Dwell, q.SettlingTimeConstants, needed)
+	est.Detail = fmt.Sprintf("averaging begins %.2g loaded time constants after each change of frequency, in a dwell of %.2g; a settled sweep needs to wait %v before it averages",
+		wait(t)/tau, q.SettlingTimeConstants, needed)
 	switch {
 	case q.Memory:
 		est.Detail += ", and the timing stated does not explain what the resonator kept from earlier points"

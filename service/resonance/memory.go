@@ -5,9 +5,11 @@ import "math"
 // evaluateRinging is the model of a resonator that has not settled. The current i in the motional arm, driven through the network by a
 // source of unit voltage behind the impedance C and with y0 = G0 + j w C0 in parallel, follows
 //
-//	di/dt = lambda i + 1/(2 L1 D),    D = 1 + C y0,    Zp = C/D,    lambda = -(R1 + Zp + jX)/(2 L1)
+//	di/dt = lambda (i - rs),    D = 1 + C y0,    Zp = C/D,    lambda = -g - 2 pi j (f - fs) - j g^2/(4 pi fs),    g = (R1 + Zp)/(2 L1)
 //
-// to its steady state rs = 1/(D (R1 + Zp + jX)), in steps of which timing.transfer gives sample and end. What the network makes of the
+// to its steady state rs = 1/(D (R1 + Zp + jX)). What rings, rings at fs whatever the source does: seen from the source's phase it turns by f - fs
+// exactly, where X/(2 L1) would turn it by (f - fs)(f + fs)/2f, which is off by some 1e-4 five bandwidths away and adds up over a sweep. The last term is what damping takes off the frequency of free ringing,
+// some 1e-5 of the bandwidth. The current goes in steps of which timing.transfer gives sample and end. What the network makes of the
 // averaged current y is F = (y0 + y)/D. State and derivatives of the state by each parameter are carried from point to point.
 //
 // Further modes would share D and Zp, and their currents would meet in Zp: lambda becomes a matrix and transfer its exponential; nothing
@@ -57,7 +59,8 @@ func (m *forward) evaluateRinging(params, residual, jacobian []float64) {
 		seen := source * inverseD // Zp
 		loop := complex(r1, x) + seen
 		steady := inverseD * reciprocal(loop)
-		lambda := loop * complex(-halfL, 0)
+		damping := complex(halfL, 0) * (complex(r1, 0) + seen)
+		lambda := -damping - complex(0, 2*math.Pi*d) - damping*damping*complex(0, 1/(4*math.Pi*fs))
 		t := clock.transfer(lambda)
 
 		// Derivatives of lambda, and of ln rs: d ln rs = -dD/D - d(loop)/loop.
@@ -65,7 +68,7 @@ func (m *forward) evaluateRinging(params, residual, jacobian []float64) {
 		if jacobian != nil {
 			inverseLoop := reciprocal(loop)
 			slope := 4 * math.Pi * l1 * (fs * p.inverse[i]) // -dX/dfs
-			byLambda[0] = complex(0, slope*halfL)
+			byLambda[0] = complex(0, 2*math.Pi)
 			bySteady[0] = steady * complex(0, slope) * inverseLoop
 			byLambda[1] = complex(-r1*halfL, 0)
 			bySteady[1] = -steady * complex(r1, 0) * inverseLoop
@@ -78,6 +81,10 @@ func (m *forward) evaluateRinging(params, residual, jacobian []float64) {
 			byLambda[3], bySteady[3] = byShunt*complex(0, p.angular[i]), steadyByShunt*complex(0, p.angular[i])
 			if m.conductance {
 				byLambda[4], bySteady[4] = byShunt, steadyByShunt
+			}
+			lower := 1 + damping*complex(0, 1/(2*math.Pi*fs)) // -d lambda/d g
+			for k := 1; k < shuntEnd; k++ {
+				byLambda[k] *= lower
 			}
 			if stretchAt >= 0 {
 				byLambda[stretchAt] = lambda // times occur only beside lambda

@@ -210,7 +210,8 @@ func TestRefusedTiming(t *testing.T) {
 		want   State
 	}{
 		{"phase restarted, short dwell", settled, sweep.Timing{Dwell: seconds(3 * tau), Phase: sweep.PhaseRestarted}, SweptTooFast},
-		{"phase restarted, long dwell", settled, sweep.Timing{Dwell: seconds(7.5 * tau), Phase: sweep.PhaseRestarted}, Found},
+		{"phase restarted, averaged after a long wait", settled, sweep.Timing{Dwell: seconds(7.5 * tau), Averaging: seconds(0.4 * tau), Phase: sweep.PhaseRestarted}, Found},
+		{"phase restarted, long dwell averaged from its beginning", settled, sweep.Timing{Dwell: seconds(20 * tau), Phase: sweep.PhaseRestarted}, SweptTooFast},
 		{"phase unstated, short dwell, no ringing to show it", settled, sweep.Timing{Dwell: seconds(3 * tau)}, SweptTooFast},
 		{"stated dwell is a third of the true one", ringing, sweep.Timing{Dwell: seconds(0.17 * tau), Averaging: seconds(0.02 * tau), Phase: sweep.PhaseRestarted}, SweptTooFast},
 	} {

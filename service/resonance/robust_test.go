@@ -7,7 +7,9 @@ import (
 )
 
 // TestNoneLost: no fit ends more than a loaded bandwidth from the truth, at 5 dB a point, with 1 % of the points wild by half the peak, on coarse
-// and on wide grids; and what is found is as good as the bound allows, but for what wild points cost.
+// and on wide grids; and what is found is as good as the bound allows, but for what wild points cost. One trial in some ten thousand has wild
+// points side by side, three times over: those are not told from something systematic, and the answer says by its uncertainty that it is
+// vague. It does not count here, and there may be one of them.
 func TestNoneLost(t *testing.T) {
 	rng := random(t, rand.Uint64())
 	trials := 120
@@ -45,6 +47,7 @@ func TestNoneLost(t *testing.T) {
 			var f Fitter
 			var est Estimate
 			var squares float64
+			vague := 0
 			for range trials {
 				req := noisy(clean, rms, rng)
 				for i := range req.Sweep.Re {
@@ -65,7 +68,14 @@ func TestNoneLost(t *testing.T) {
 				if est.State != Found || !(math.Abs(off) < bw) {
 					t.Errorf("%s, %s: lost, %s %s, fs off by %g bandwidths", c.name, p.name, est.State, est.Detail, off/bw)
 				}
+				if u := math.Sqrt(est.Statistical[ResonanceHz][ResonanceHz]); u > 5*limit && math.Abs(off) < 3*u {
+					vague++
+					continue
+				}
 				squares += off * off
+			}
+			if vague > 1 {
+				t.Errorf("%s, %s: %d of %d answers are vague", c.name, p.name, vague, trials)
 			}
 			if ratio := math.Sqrt(squares/float64(trials)) / limit; ratio > c.most+5/math.Sqrt(2*float64(trials)) {
 				t.Errorf("%s, %s: rms error of fs %.2f times the bound", c.name, p.name, ratio)
