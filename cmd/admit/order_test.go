@@ -47,29 +47,22 @@ func orderJSON(t *testing.T, dir string) (int, order, string) {
 // cell and cable stands in for C0; and n^2 Cn/C1 is within a fifth of 1, as a plate has it.
 func TestOrderOfBareDiscs(t *testing.T) {
 	orders := []int{1, 3, 5}
+	// With one overtone alone 1 and 3 might as well be 3 and 9, and the capacitance of the cell speaks for that: what makers offer at 5 MHz decides.
+	dir := writeFolder(t, peer.Shared(t, "data", "measured", "at-cut-5mhz-disc-1-bare-air-n1.s1p"), "s11", fmt.Sprintf(openPartType, 1, 5e6), nominalReflection)
+	addWindow(t, dir, peer.Shared(t, "data", "measured", "at-cut-5mhz-disc-1-bare-air-n3.s1p"), 3)
+	if code, o, errs := orderJSON(t, dir); code != exitPass || o.Order != 1 || o.Probability < 0.7 {
+		t.Errorf("one overtone alone: exit %d, %+v %s", code, o, errs)
+	}
 	for disc := 1; disc <= 2; disc++ {
 		file := func(n int) string {
 			return peer.Shared(t, "data", "measured", fmt.Sprintf("at-cut-5mhz-disc-%d-bare-air-n%d.s1p", disc, n))
 		}
 		for _, main := range orders {
 			dir := writeFolder(t, file(main), "s11", fmt.Sprintf(openPartType, main, 5e6*float64(main)), nominalReflection)
-			list := ""
 			for _, n := range orders {
-				if n == main {
-					continue
+				if n != main {
+					addWindow(t, dir, file(n), n)
 				}
-				text, err := os.ReadFile(file(n))
-				if err != nil {
-					t.Fatal(err)
-				}
-				name := fmt.Sprintf("overtone-%d.s1p", n)
-				if err := os.WriteFile(filepath.Join(dir, name), text, 0o600); err != nil {
-					t.Fatal(err)
-				}
-				list += fmt.Sprintf("  - {file: %s, role: overtone, order: %d, quantity: s11}\n", name, n)
-			}
-			if err := edit(dir, "inspection.yaml", func(s string) string { return s + list }); err != nil {
-				t.Fatal(err)
 			}
 			code, o, errs := orderJSON(t, dir)
 			if code != exitPass || o.Order != main || o.Probability < 0.8 || len(o.Responses) != 3 {
@@ -89,6 +82,23 @@ func TestOrderOfBareDiscs(t *testing.T) {
 				}
 			}
 		}
+	}
+}
+
+// addWindow adds an overtone window to an inspection folder.
+func addWindow(t *testing.T, dir, file string, n int) {
+	t.Helper()
+	text, err := os.ReadFile(file)
+	if err != nil {
+		t.Fatal(err)
+	}
+	name := fmt.Sprintf("overtone-%d.s1p", n)
+	if err := os.WriteFile(filepath.Join(dir, name), text, 0o600); err != nil {
+		t.Fatal(err)
+	}
+	item := fmt.Sprintf("  - {file: %s, role: overtone, order: %d, quantity: s11}\n", name, n)
+	if err := edit(dir, "inspection.yaml", func(s string) string { return s + item }); err != nil {
+		t.Fatal(err)
 	}
 }
 

@@ -29,7 +29,9 @@ func main() {
 func command() *cobra.Command {
 	root := &cobra.Command{
 		Use: "prove", Short: "Takes the long measurements that Admit's claims rest on",
-		SilenceUsage: true, SilenceErrors: true, Args: cobra.NoArgs,
+		SilenceUsage: true, SilenceErrors: true,
+		Args: cobra.NoArgs, // an unknown name ends up here
+		RunE: func(c *cobra.Command, _ []string) error { return c.Help() },
 	}
 	root.AddCommand(accuracyCommand(), fitCommand())
 	return root

@@ -236,7 +236,11 @@ func TestWhichUnit(t *testing.T) {
 // TestStrangersAreNotTaken: of units of one lot, drawn one after the other, none is taken for the one before it or for two.
 func TestStrangersAreNotTaken(t *testing.T) {
 	s := newShift(t, 2, 35, "")
-	for n := range 300 {
+	units := 300
+	if testing.Short() {
+		units = 60
+	}
+	for n := range units {
 		r := s.take("S"+string(rune('A'+n%26))+string(rune('a'+n/26)), s.mainOf(s.draw()))
 		if c := causes(&r.Judgement); strings.Contains(c, string(verdict.SameUnitAgain)) || strings.Contains(c, string(verdict.TwoUnits)) {
 			t.Errorf("unit %d: %s", n, told(&r.Judgement))

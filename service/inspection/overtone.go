@@ -268,7 +268,9 @@ func (w *workup) notFound(o *parttype.OvertoneLimit, windows []*fitted, r *verdi
 	for _, f := range windows {
 		width = math.Max(width, w.observable(f, o.Definition, confidence).narrowestHz(stated))
 	}
-	w.observability = append(w.observability, verdict.Observability{FromHz: low, ToHz: high, NarrowestWidthHz: width, SuppressionDB: stated})
+	if !math.IsNaN(width) && !math.IsInf(width, 0) {
+		w.observability = append(w.observability, verdict.Observability{FromHz: low, ToHz: high, NarrowestWidthHz: width, SuppressionDB: stated})
+	}
 }
 
 // covered reports whether windows cover a band together; gap is the first frequency that they leave out.

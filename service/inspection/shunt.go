@@ -133,7 +133,7 @@ const shuntMisfit = 0.01
 
 // takeShunt keeps a fit as a quantity, unless it is none.
 func (w *workup) takeShunt(f shuntFit) {
-	if math.IsNaN(f.farad) || math.IsNaN(f.variance) || f.variance < 0 {
+	if math.IsNaN(f.farad) || math.IsInf(f.farad, 0) || math.IsNaN(f.variance) || f.variance < 0 {
 		return
 	}
 	if f.residual > 10*f.noise && f.share > shuntMisfit {

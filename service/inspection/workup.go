@@ -178,8 +178,5 @@ func (w *workup) remark(format string, args ...any) {
 	w.remarks = append(w.remarks, fmt.Sprintf(format, args...))
 }
 
-// relative returns a ratio as parts per million above 1.
-func relative(ratio float64) float64 { return (ratio - 1) * 1e6 }
-
 // near reports whether two positive numbers agree within a share of the second.
 func near(a, b, share float64) bool { return math.Abs(a-b) <= share*b }

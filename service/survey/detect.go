@@ -10,6 +10,9 @@ const (
 	mostRefused = 8 // places remembered that turned out to be none
 	mostRounds  = 60
 
+	// The solver's steps after which the search is given up: what is left is then no modes, but something else that modes describe badly.
+	mostIterations = 800
+
 	// A peak of the search is worth a look from this share of the threshold on: template and mode differ in width and place.
 	worthALook = 0.6
 	// And a fit of all modes from this share on, where the mode stands by itself: what it gains by itself is then nearly all that it can gain.
@@ -37,6 +40,10 @@ func (v *Surveyor) detect() {
 		}
 		v.search()
 		n, near := v.choose(most - v.now.modes)
+		if v.iterations > mostIterations && n > 0 {
+			v.more = true
+			return
+		}
 		switch {
 		case near && v.extend():
 			continue // what looked like a mode beside another may have been a turn of the phase

@@ -245,6 +245,35 @@ func TestPairs(t *testing.T) {
 	}
 }
 
+// On a coarse grid one start does not lead to both of a pair: the other, in which one mode is split in two, does.
+func TestCoarsePairs(t *testing.T) {
+	rng := random(t)
+	trials := 300
+	if testing.Short() {
+		trials = 100
+	}
+	n, plain := piNetwork, tenMegahertz()
+	main := plain.modes[0]
+	bw := main.width(n)
+	f := grid(10e6-50*bw, 10e6+50*bw, 201)
+	var v Surveyor
+	var out Result
+	lost := 0
+	for range trials {
+		u := plain
+		apart, width := 0.2*math.Pow(15, rng.Float64()), 0.2*math.Pow(15, rng.Float64())
+		u.modes = append(append([]branch(nil), plain.modes...), unwanted(main, n, 10e6+apart*bw, 6*rng.Float64(), width*bw))
+		v.Survey(noisy(settled(u, n, f), plain.peak(n)*decibels(-80), rng), &out)
+		if len(out.Modes) < 2 {
+			lost++
+		}
+	}
+	t.Logf("%d of %d pairs taken for one mode", lost, trials)
+	if lost > trials/50 {
+		t.Errorf("%d of %d pairs taken for one mode", lost, trials)
+	}
+}
+
 // What could not have been seen follows from the formula.
 func TestObservabilityFormula(t *testing.T) {
 	rng := random(t)

@@ -170,6 +170,7 @@ func (v *Surveyor) finish() {
 			k++
 		}
 	}
+	v.restore(&v.now)
 	for p := optionals - 1; p >= 0; p-- {
 		if !v.model.has(p) {
 			continue

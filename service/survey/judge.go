@@ -68,6 +68,9 @@ func (v *Surveyor) describe(out *Result) {
 	}
 	if k := v.strongest(); k >= 0 {
 		l := m.lobeOf(v.now.params, k)
+		if !(v.visible(l) > 0) {
+			return // its point was left out
+		}
 		q.SNRDecibel = 20 * math.Log10(v.visible(l)/math.Sqrt(v.variance))
 		q.ResidualOverPeak = math.Sqrt(v.now.sum/float64(s.n)) / v.visible(l)
 	}

@@ -92,8 +92,12 @@ func (m *model) parameters() int { return m.at(m.modes) }
 // armOf returns a mode of a vector of parameters, network known.
 func (m *model) armOf(params []float64, mode int) arm {
 	p := params[m.at(mode):]
-	return arm{p[ResonanceHz], math.Exp(p[LogResistance]), math.Exp(p[LogInductance])}
+	return arm{p[ResonanceHz], math.Max(math.Exp(p[LogResistance]), leastResistanceOhm), math.Exp(p[LogInductance])}
 }
+
+// leastResistanceOhm is what stands for no resistance: a mode of which only the tail is seen, or one point beside it, may have none at all, and
+// its logarithm is not followed any further.
+const leastResistanceOhm = 1e-6
 
 // prepare makes room and puts the model at no modes at all.
 func (m *model) prepare(s *samples) {

@@ -82,7 +82,7 @@ func (v *Surveyor) fill(out *Result) {
 		if !s.unknown {
 			t.add(row+1, at+1, 1)
 			t.add(row+2, at+2, 1)
-			out.Value[row+1], out.Value[row+2] = p[1], p[2]
+			out.Value[row+1], out.Value[row+2] = math.Max(p[1], math.Log(leastResistanceOhm)), p[2]
 			continue
 		}
 		// ln R = -ln|a|, ln L = ln R - ln(4 pi half). The amplitude's two parts enter ln|a| only; half's share of ln L is put in by shapeShare.
@@ -317,7 +317,7 @@ func (v *Surveyor) suppressions(out *Result) {
 			if v.samples.unknown && d != ResistanceRatio {
 				continue
 			}
-			byMode, byMain := perNeper*r/(r+z), perNeper*v.reference/(v.reference+z)
+			byMode, byMain := perNeper*r/(r+z), -perNeper*v.reference/(v.reference+z)
 			value := network.TransmissionDB(v.reference, r, z)
 			if known == nil {
 				mode.Suppression[d] = out.combined(value, []int{row, out.Index(main, LogResistance)}, []float64{byMode, byMain})

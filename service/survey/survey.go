@@ -178,7 +178,7 @@ type Result struct {
 	Detail string          // in words with numbers, for a person: why it is not Found, or what is remarkable
 
 	Modes []Mode // the main mode or overtone first, then by frequency
-	More  bool   // the search ended at the largest number of modes: there may be more
+	More  bool   // the search ended at the largest number of modes, or of steps: there may be more
 
 	ShuntCapacitanceFarad   Quantity // C0 away from all modes
 	ShuntConductanceSiemens Quantity // 0 where it was not fitted

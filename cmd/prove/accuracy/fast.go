@@ -19,6 +19,7 @@ type fastRow struct {
 	averaging float64 // share of the dwell
 	leadIn    float64
 	down      bool
+	glide     bool // the source does not step but moves on all the time, from half a step before a frequency to half a step after it
 }
 
 // fastRows returns the rows of the table: every sweep lasts at least eight time constants.
@@ -35,6 +36,8 @@ func (o Options) fastRows() []fastRow {
 		fastRow{note: "tail half averaged", points: 401, dwell: 0.2, averaging: 0.5},
 		fastRow{note: "lead-in 0.7", points: 401, dwell: 0.1, averaging: 0.5, leadIn: 0.7},
 		fastRow{note: "downwards", points: 401, dwell: 0.2, averaging: 0.5, down: true},
+		fastRow{note: "gliding", points: 401, dwell: 0.2, averaging: 1, glide: true},
+		fastRow{note: "gliding", points: 401, dwell: 0.05, averaging: 1, glide: true},
 		fastRow{note: "eight time constants in all", points: 161, dwell: 0.05, averaging: 1},
 		fastRow{note: "eight time constants in all", points: 41, dwell: 0.2, averaging: 1},
 	)
@@ -60,7 +63,33 @@ func (f fastRow) cell(p place, snr float64) (*cell, error) {
 	if f.down {
 		slices.Reverse(frequencies)
 	}
-	return newCell(fmt.Sprintf("fast %s %s %g dB", p.name, f, snr), p, frequencies, snr, sweep.S21, f.timing(&p))
+	c, err := newCell(fmt.Sprintf("fast %s %s %g dB", p.name, f, snr), p, frequencies, snr, sweep.S21, f.timing(&p))
+	if err == nil && f.glide {
+		c.glide()
+	}
+	return c, err
+}
+
+// glide replaces the samples by those of a source that moves at a constant rate: forty small steps for each, their mean the sample.
+func (c *cell) glide() {
+	const fine = 40
+	s := c.request.Sweep
+	s.Timing.Dwell -= s.Timing.Dwell % fine // whole nanoseconds a small step
+	s.Timing.Averaging = s.Timing.Dwell
+	step := s.FrequencyHz[1] - s.FrequencyHz[0]
+	small := make([]float64, 0, fine*len(s.FrequencyHz))
+	for _, f := range s.FrequencyHz {
+		for k := range fine {
+			small = append(small, f+step*((float64(k)+0.5)/fine-0.5))
+		}
+	}
+	samples := c.place.fixture.Stepped(c.place.unit, small, sweep.Timing{Dwell: s.Timing.Dwell / fine, Phase: sweep.PhaseContinuous})
+	for i := range c.clean {
+		c.clean[i] = 0
+		for _, v := range samples[i*fine : (i+1)*fine] {
+			c.clean[i] += v / fine
+		}
+	}
 }
 
 // Fast measures sweeps that outrun the resonator, with dwell and averaging stated and a source of continuous phase: the gates of Efficiency,
