@@ -43,6 +43,9 @@ func publishPartTypeCommand() *cobra.Command {
 					return fmt.Errorf("%s: %w", file, answered(err))
 				}
 				published(c, answer.GetPartType().GetName()+fmt.Sprintf(" version %d", answer.GetPartType().GetVersion()), answer.GetAlreadyPublished())
+				for _, w := range answer.GetWarnings() {
+					fmt.Fprintf(c.OutOrStdout(), "  note: %s\n", w)
+				}
 			}
 			return nil
 		},

@@ -79,7 +79,7 @@ func (i *inspect) run() error {
 		}
 		switch m := m.GetMessage().(type) {
 		case *pb.InspectRequest_Header:
-			err = i.intake.header(m.Header)
+			err = i.header(m.Header)
 		case *pb.InspectRequest_Samples:
 			err = i.samples(m.Samples)
 		case *pb.InspectRequest_End:
@@ -130,6 +130,15 @@ func (i *inspect) begin() error {
 	}
 	i.closed = i.s.board.Opened(begin.Station)
 	return nil
+}
+
+// header takes what is said of the next sweep; a source power that could overdrive a unit is refused before its samples.
+func (i *inspect) header(m *pb.SweepHeader) error {
+	h, err := i.intake.header(m)
+	if err != nil {
+		return err
+	}
+	return i.session.Announce(&h.Sweep)
 }
 
 func (i *inspect) samples(m *pb.SweepSamples) error {

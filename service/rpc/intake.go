@@ -17,27 +17,26 @@ type intake struct {
 	taken    int // points, from the budget
 }
 
-// header begins the next sweep.
-func (t *intake) header(m *pb.SweepHeader) error {
+// header begins the next sweep, and returns what is said of it.
+func (t *intake) header(m *pb.SweepHeader) (h inspection.SweepHeader, err error) {
 	if t.assembly.Open() {
-		return malformed("header", "want the remaining samples of sweep %d first, got the header of another", t.headers-1)
+		return h, malformed("header", "want the remaining samples of sweep %d first, got the header of another", t.headers-1)
 	}
 	if t.headers == inspection.MaxSweeps {
-		return malformed("header", "want at most %d sweeps in one inspection, got one more", inspection.MaxSweeps)
+		return h, malformed("header", "want at most %d sweeps in one inspection, got one more", inspection.MaxSweeps)
 	}
 	if int64(m.GetIndex()) != int64(t.headers) {
-		return malformed("header.index", "want %d, the number of sweeps before it, got %d", t.headers, m.GetIndex())
+		return h, malformed("header.index", "want %d, the number of sweeps before it, got %d", t.headers, m.GetIndex())
 	}
-	h, err := wire.HeaderFromProto(m)
-	if err != nil {
-		return within("header", err)
+	if h, err = wire.HeaderFromProto(m); err != nil {
+		return h, within("header", err)
 	}
 	if t.declared += h.Points; t.declared > inspection.MaxSample {
-		return malformed("header.points", "want at most %d points in one inspection, got %d", inspection.MaxSample, t.declared)
+		return h, malformed("header.points", "want at most %d points in one inspection, got %d", inspection.MaxSample, t.declared)
 	}
 	t.headers++
 	t.assembly.Start(h)
-	return nil
+	return h, nil
 }
 
 // samples adds a chunk; when it completes its sweep, that is returned with done true.

@@ -85,7 +85,8 @@ func (j *judging) take(m *pb.JudgeRequest) error {
 				return err
 			}
 		}
-		return j.sweeps.header(m.Header)
+		_, err := j.sweeps.header(m.Header)
+		return err
 	case *pb.JudgeRequest_Samples:
 		w, done, err := j.sweeps.samples(m.Samples)
 		if err != nil || !done {
@@ -128,6 +129,9 @@ func (j *judging) context(m *pb.JudgeContext) error {
 			return err
 		}
 		j.c.Calibration = j.standard.calibration
+	}
+	if j.c.Background, err = wire.BackgroundFromProto(m.GetBackground()); err != nil {
+		return within("background", err)
 	}
 	j.c.Begin, j.c.PartType = b, p
 	return nil

@@ -43,7 +43,7 @@ func (h partTypeService) PublishPartType(ctx context.Context, m *pb.PublishPartT
 		return nil, err
 	}
 	if m.GetValidateOnly() {
-		return &pb.PublishPartTypeResponse{PartType: partTypeToProto(inspection.Published{PartType: p}, true)}, nil
+		return &pb.PublishPartTypeResponse{PartType: partTypeToProto(inspection.Published{PartType: p}, true), Warnings: parttype.Warnings(p)}, nil
 	}
 	caller := callerFrom(ctx)
 	kept, already, err := h.s.o.Publisher.PublishPartType(ctx, p, caller.Name)
@@ -55,7 +55,7 @@ func (h partTypeService) PublishPartType(ctx context.Context, m *pb.PublishPartT
 	}
 	h.s.log.LogAttrs(ctx, slog.LevelInfo, "part_type_published",
 		slog.String("caller", caller.Name), slog.String("part_type", p.Name), slog.Int("version", p.Version), slog.Bool("already", already))
-	return &pb.PublishPartTypeResponse{PartType: partTypeToProto(kept, true), AlreadyPublished: already}, nil
+	return &pb.PublishPartTypeResponse{PartType: partTypeToProto(kept, true), AlreadyPublished: already, Warnings: parttype.Warnings(p)}, nil
 }
 
 // GetPartType returns one version with its limits file.

@@ -316,10 +316,11 @@ func (m *model) lobeOf(params []float64, mode int) lobe {
 	i := m.s.nearest(a.offsetHz)
 	rest := m.admittanceAt(params, i, mode)
 	z := m.seenBy(rest, i)
+	whole := math.Max(a.resistance+real(z), a.resistance/2) // noise can make a fitted G0 negative, and with it what is seen
 	l := lobe{
 		centreHz: a.offsetHz - imag(z)/(4*math.Pi*a.inductance),
-		halfHz:   (a.resistance + real(z)) / (4 * math.Pi * a.inductance),
-		height:   complex(1/(a.resistance+real(z)), 0),
+		halfHz:   whole / (4 * math.Pi * a.inductance),
+		height:   complex(1/whole, 0),
 	}
 	l.weight = m.weightOf(rest, i)
 	return l

@@ -175,8 +175,10 @@ type PublishPartTypeResponse struct {
 	PartType *PartType `protobuf:"bytes,1,opt,name=part_type,json=partType,proto3" json:"part_type,omitempty"`
 	// The same file was published earlier.
 	AlreadyPublished bool `protobuf:"varint,2,opt,name=already_published,json=alreadyPublished,proto3" json:"already_published,omitempty"`
-	unknownFields    protoimpl.UnknownFields
-	sizeCache        protoimpl.SizeCache
+	// What whoever wrote the file should know: limits that others imply, one sentence each.
+	Warnings      []string `protobuf:"bytes,3,rep,name=warnings,proto3" json:"warnings,omitempty"`
+	unknownFields protoimpl.UnknownFields
+	sizeCache     protoimpl.SizeCache
 }
 
 func (x *PublishPartTypeResponse) Reset() {
@@ -221,6 +223,13 @@ func (x *PublishPartTypeResponse) GetAlreadyPublished() bool {
 		return x.AlreadyPublished
 	}
 	return false
+}
+
+func (x *PublishPartTypeResponse) GetWarnings() []string {
+	if x != nil {
+		return x.Warnings
+	}
+	return nil
 }
 
 // Asks for a part type.
@@ -459,10 +468,11 @@ const file_admit_v1_part_type_proto_rawDesc = "" +
 	"\x16PublishPartTypeRequest\x12\x1f\n" +
 	"\vlimits_file\x18\x01 \x01(\fR\n" +
 	"limitsFile\x12#\n" +
-	"\rvalidate_only\x18\x02 \x01(\bR\fvalidateOnly\"w\n" +
+	"\rvalidate_only\x18\x02 \x01(\bR\fvalidateOnly\"\x93\x01\n" +
 	"\x17PublishPartTypeResponse\x12/\n" +
 	"\tpart_type\x18\x01 \x01(\v2\x12.admit.v1.PartTypeR\bpartType\x12+\n" +
-	"\x11already_published\x18\x02 \x01(\bR\x10alreadyPublished\"B\n" +
+	"\x11already_published\x18\x02 \x01(\bR\x10alreadyPublished\x12\x1a\n" +
+	"\bwarnings\x18\x03 \x03(\tR\bwarnings\"B\n" +
 	"\x12GetPartTypeRequest\x12\x12\n" +
 	"\x04name\x18\x01 \x01(\tR\x04name\x12\x18\n" +
 	"\aversion\x18\x02 \x01(\rR\aversion\"F\n" +
