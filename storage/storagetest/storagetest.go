@@ -16,6 +16,7 @@ type Backend interface {
 	inspection.Catalogue
 	inspection.Archive
 	inspection.Publisher
+	inspection.History
 }
 
 type restarter interface {
@@ -39,6 +40,7 @@ func Run(t *testing.T, open func(t *testing.T) Backend) {
 		{"CallerKeepsItsBuffers", callerKeepsItsBuffers},
 		{"Attempts", attempts},
 		{"Purposes", purposes},
+		{"OfUnit", ofUnit},
 		{"CountsByQuarter", countsByQuarter},
 		{"CountsAgainstModel", countsAgainstModel},
 		{"ListAgainstModel", listAgainstModel},

@@ -1,18 +1,15 @@
-package memory
+package storagetest
 
 import (
 	"fmt"
-	"testing"
 
 	"example.com/admit/service/inspection"
 	"example.com/admit/service/verdict"
-	"example.com/admit/storage/storagetest"
 )
 
-// TestOfUnit: a unit is known by its serial, or by lot, carrier and pocket; part type and purpose part its histories.
-func TestOfUnit(t *testing.T) {
-	s := New(wallClock{})
-	plant := storagetest.NewPlant(t, s)
+// ofUnit: a unit is known by its serial, or by lot, carrier and pocket; part type and purpose part its histories.
+func ofUnit(c *scene) {
+	t, s, plant := c.T, c.Backend, c.Plant
 	pocket := inspection.UnitID{Lot: "L2601", Carrier: "C07", Pocket: 1}
 	for _, change := range []func(*inspection.Begin){
 		func(*inspection.Begin) {},
