@@ -100,6 +100,7 @@ func (f *Fitter) fillShape(est *Estimate, variance float64) bool {
 func (f *Fitter) systematic(est *Estimate) {
 	if f.request.ScaleUnknown {
 		f.unknownNetwork(est)
+		f.averagingTime(est)
 		f.clock(est)
 		return
 	}
@@ -136,8 +137,24 @@ func (f *Fitter) systematic(est *Estimate) {
 		}
 		est.Systematic = append(est.Systematic, contribution(c.Name, c.Group, shift))
 	}
+	f.averagingTime(est)
 	f.clock(est)
 }
+
+// averagingTime adds what it does not to know over which part of its dwell a sample was averaged, where the resonator rings and no timing is
+// stated. The model takes the whole dwell; a sample of the tail alone is later by up to half a dwell, in which the source has moved on by half a
+// step. Anything in between is as likely: half a step over the square root of three.
+func (f *Fitter) averagingTime(est *Estimate) {
+	if !f.memory() || f.request.Sweep.Timing.Dwell > 0 {
+		return
+	}
+	low, high := f.points.span()
+	half := (high - low) / float64(f.points.n-1) / 2
+	est.Systematic = append(est.Systematic, contribution(AveragingInfluence, "", [Parameters]float64{ResonanceHz: half / math.Sqrt(3)}))
+}
+
+// AveragingInfluence is the name of the influence of an averaging time that is not stated.
+const AveragingInfluence = "averaging_time"
 
 // clock adds the influence of the reference clock.
 func (f *Fitter) clock(est *Estimate) {

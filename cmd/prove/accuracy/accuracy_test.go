@@ -74,10 +74,8 @@ func prove(t *testing.T, proof func(Options, *trial.Report) error) {
 func TestEfficiency(t *testing.T)    { prove(t, Efficiency) }
 func TestLost(t *testing.T)          { prove(t, Lost) }
 func TestFast(t *testing.T)          { prove(t, Fast) }
-func TestUnstated(t *testing.T)      { prove(t, Unstated) }
 func TestSettling(t *testing.T)      { prove(t, Settling) }
 func TestMeasured(t *testing.T)      { prove(t, Measured) }
-func TestDrift(t *testing.T)         { prove(t, Drift) }
 func TestNamed(t *testing.T)         { prove(t, Named) }
 func TestRobust(t *testing.T)        { prove(t, Robust) }
 func TestSecondOpinion(t *testing.T) { prove(t, SecondOpinion) }

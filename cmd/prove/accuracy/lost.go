@@ -15,14 +15,25 @@ import (
 // lostBandwidths is how far from the truth fs counts as lost: half a loaded bandwidth is a dozen standard deviations at 5 dB a point.
 const lostBandwidths = 0.5
 
-// Lost counts the fits that end anywhere but at the unit: at 5 dB a point, and with one point in a hundred wild by half the response or by
-// five of it. The gate is none. Half the trials are told what the part type expects.
+// Lost counts the fits that end anywhere but at the unit: at 5 dB a point, and with one point in a hundred wild by half the response. The gate is
+// none. Half the trials are told what the part type expects.
 func Lost(o Options, r *trial.Report) error {
+	return lostRows(o, r, []lostRow{{5, 0}, {50, 0.5}, {20, 0.5}})
+}
+
+// FarOut is Lost with points wild by five times the response.
+func FarOut(o Options, r *trial.Report) error {
+	return lostRows(o, r, []lostRow{{50, 5}})
+}
+
+type lostRow struct{ snr, wild float64 }
+
+func lostRows(o Options, r *trial.Report, rows []lostRow) error {
 	t := r.Table(fmt.Sprintf("Lost fits: 401 points over +-5 loaded bandwidths, %d trials a cell", o.Trials), "unit", "SNR dB", "wild points",
 		"lost", "fs sd/bound", "R1 sd/bound", "states")
 	defer t.Close()
 	for _, p := range o.places() {
-		for _, c := range []struct{ snr, wild float64 }{{5, 0}, {50, 0.5}, {50, 5}, {20, 0.5}} {
+		for _, c := range rows {
 			if err := lost(o, r, t, p, c.snr, c.wild); err != nil {
 				return err
 			}

@@ -21,7 +21,7 @@ type proof struct {
 // proofs lists all of them.
 func proofs() []proof {
 	return []proof{
-		{"efficiency", Efficiency}, {"lost fits", Lost}, {"fast sweeps", Fast}, {"timing not stated", Unstated}, {"settling", Settling}, {"real fast sweeps", Measured},
+		{"efficiency", Efficiency}, {"lost fits", Lost}, {"far wild points", FarOut}, {"fast sweeps", Fast}, {"timing not stated", Unstated}, {"settling", Settling}, {"real fast sweeps", Measured},
 		{"drift", Drift}, {"drift that is named", Named}, {"robustness", Robust}, {"second opinion", SecondOpinion},
 	}
 }

@@ -92,13 +92,21 @@ func Measure(ctx context.Context, o Options, r *trial.Report) error {
 	if missing {
 		first.of, first.must = "(not compared: "+err.Error()+")", 0
 	}
-	print(r, append([]row{first}, rows...))
+	print(r, o.slack(), append([]row{first}, rows...))
 	r.Printf("scipy.optimize.least_squares, analytic derivative, the same kind of sweep: %.0f us", 1e6*theirs.Seconds())
 	return err
 }
 
+// slack is by how much a ratio may miss its gate: a test runs on busy machines beside other tests, so the quick form gates at ten times.
+func (o Options) slack() float64 {
+	if o.Quick {
+		return 10
+	}
+	return 1
+}
+
 // print prints the table and holds the rows against their gates.
-func print(r *trial.Report, rows []row) {
+func print(r *trial.Report, slack float64, rows []row) {
 	t := r.Table("The fit, one core", "work", "time us", "ratio", "", "must", "reach for", "allocations")
 	defer t.Close()
 	for _, w := range rows {
@@ -108,9 +116,9 @@ func print(r *trial.Report, rows []row) {
 		}
 		t.Row(w.work, fmt.Sprintf("%.0f", 1e6*w.seconds), fmt.Sprintf("%.1f", w.ratio), w.of, w.must, w.reach, allocations)
 		switch {
-		case w.large && !(w.ratio >= w.must):
+		case w.large && !(w.ratio*slack >= w.must):
 			r.Fail("%s: %.1f %s, must be %g", w.work, w.ratio, w.of, w.must)
-		case !w.large && !(w.ratio <= w.must):
+		case !w.large && !(w.ratio <= w.must*slack):
 			r.Fail("%s: %.1f %s, must be at most %g", w.work, w.ratio, w.of, w.must)
 		}
 		if w.allocations > 0 {

@@ -11,26 +11,21 @@ import (
 	"example.com/admit/cmd/prove/peer"
 )
 
-// TestSpeed is the quick form of the table. Times say little on a busy machine, so each ratio may be taken three times.
+// TestSpeed is the quick form of the table, gated at ten times the figures.
 func TestSpeed(t *testing.T) {
-	for attempt := 1; ; attempt++ {
-		var out strings.Builder
-		r := trial.NewReport(&out)
-		o := Options{Seed: rand.Uint64(), Quick: true}
-		err := Measure(t.Context(), o, r)
-		t.Logf("seed %d\n%s", o.Seed, out.String())
-		if errors.Is(err, scipy.ErrMissing) && !peer.Required() {
-			t.Skip(err)
-		}
-		if err != nil {
-			t.Fatal(err)
-		}
-		if len(r.Failures()) == 0 {
-			return
-		}
-		if attempt == 3 {
-			t.Fatal(strings.Join(r.Failures(), "\n"))
-		}
+	var out strings.Builder
+	r := trial.NewReport(&out)
+	o := Options{Seed: rand.Uint64(), Quick: true}
+	err := Measure(t.Context(), o, r)
+	t.Logf("seed %d\n%s", o.Seed, out.String())
+	if errors.Is(err, scipy.ErrMissing) && !peer.Required() {
+		t.Skipf("skipped: %v", err)
+	}
+	if err != nil {
+		t.Fatal(err)
+	}
+	if f := r.Failures(); len(f) > 0 {
+		t.Fatal(strings.Join(f, "\n"))
 	}
 }
 
