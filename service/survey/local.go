@@ -88,11 +88,9 @@ func (o *local) Evaluate(params, residual, jacobian []float64) {
 		residual[0] = math.NaN()
 		return
 	}
-	height := complex(params[2], 0)
+	height := complex(math.Exp(params[2]), 0)
 	if o.m.s.unknown {
 		height = complex(params[2], params[3])
-	} else {
-		height = complex(math.Exp(params[2]), 0)
 	}
 	if o.m.memory {
 		o.free.resize(o.to - o.from)

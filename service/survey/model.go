@@ -43,11 +43,6 @@ func (m *model) has(p optional) bool {
 	return [optionals]bool{m.conductance, m.phase, m.stretched}[p]
 }
 
-// with switches an optional parameter on or off.
-func (m *model) with(p optional, on bool) {
-	*[optionals]*bool{&m.conductance, &m.phase, &m.stretched}[p] = on
-}
-
 // base returns how many parameters every model has that are not those of modes.
 func (m *model) base() int {
 	if m.s.unknown {
