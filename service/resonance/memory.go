@@ -5,12 +5,12 @@ import "math"
 // evaluateRinging is the model of a resonator that has not settled. The current i in the motional arm, driven through the network by a
 // source of unit voltage behind the impedance C and with y0 = G0 + j w C0 in parallel, follows
 //
-//	di/dt = lambda (i - rs),    D = 1 + C y0,    Zp = C/D,    lambda = -g - 2 pi j (f - fs) - j g^2/(4 pi fs),    g = (R1 + Zp)/(2 L1)
+//	di/dt = lambda (i - rs),    D = 1 + C y0,    Zp = C/D,    lambda = -g - 2 pi j (f - fs) - j g^2/(4 pi fs),    g = (R1 + Zp(fs))/(2 L1)
 //
 // to its steady state rs = 1/(D (R1 + Zp + jX)). What rings, rings at fs whatever the source does: seen from the source's phase it turns by f - fs
 // exactly, where X/(2 L1) would turn it by (f - fs)(f + fs)/2f, which is off by some 1e-4 five bandwidths away and adds up over a sweep. The last term is what damping takes off the frequency of free ringing,
 // some 1e-5 of the bandwidth. The current goes in steps of which timing.transfer gives sample and end. What the network makes of the
-// averaged current y is F = (y0 + y)/D. State and derivatives of the state by each parameter are carried from point to point.
+// averaged current y is F = (y0 + y)/D, with D(fs) for what rings. State and derivatives of the state by each parameter are carried from point to point.
 //
 // Further modes would share D and Zp, and their currents would meet in Zp: lambda becomes a matrix and transfer its exponential; nothing
 // else here changes.
@@ -59,7 +59,10 @@ func (m *forward) evaluateRinging(params, residual, jacobian []float64) {
 		seen := source * inverseD // Zp
 		loop := complex(r1, x) + seen
 		steady := inverseD * reciprocal(loop)
-		damping := complex(halfL, 0) * (complex(r1, 0) + seen)
+		// What rings is loaded by the network at fs, not where the source is.
+		inverseRing := reciprocal(1 + source*complex(g0, 2*math.Pi*fs*c0)) // 1/D(fs)
+		loading := source * inverseRing
+		damping := complex(halfL, 0) * (complex(r1, 0) + loading)
 		lambda := -damping - complex(0, 2*math.Pi*d) - damping*damping*complex(0, 1/(4*math.Pi*fs))
 		t := clock.transfer(lambda)
 
@@ -72,16 +75,17 @@ func (m *forward) evaluateRinging(params, residual, jacobian []float64) {
 			bySteady[0] = steady * complex(0, slope) * inverseLoop
 			byLambda[1] = complex(-r1*halfL, 0)
 			bySteady[1] = -steady * complex(r1, 0) * inverseLoop
-			byLambda[2] = (complex(r1, 0) + seen) * complex(halfL, 0) // X/L1 does not move
+			byLambda[2] = damping
 			bySteady[2] = -steady * complex(0, x) * inverseLoop
 			// By y0: dD = C, dZp = -Zp^2.
 			square := seen * seen
-			byShunt := square * complex(halfL, 0)
+			byShunt := loading * loading * complex(halfL, 0)
 			steadyByShunt := steady * (square*inverseLoop - seen)
-			byLambda[3], bySteady[3] = byShunt*complex(0, p.angular[i]), steadyByShunt*complex(0, p.angular[i])
+			byLambda[3], bySteady[3] = byShunt*complex(0, 2*math.Pi*fs), steadyByShunt*complex(0, p.angular[i])
 			if m.conductance {
 				byLambda[4], bySteady[4] = byShunt, steadyByShunt
 			}
+			byLambda[0] += byShunt * complex(0, 2*math.Pi*c0)
 			lower := 1 + damping*complex(0, 1/(2*math.Pi*fs)) // -d lambda/d g
 			for k := 1; k < shuntEnd; k++ {
 				byLambda[k] *= lower
@@ -98,8 +102,9 @@ func (m *forward) evaluateRinging(params, residual, jacobian []float64) {
 			}
 		}
 		away := state - steady
-		y := steady + away*t.mean
-		f := (shunt + y) * inverseD
+		ring := away * t.mean
+		settled := (shunt + steady) * inverseD
+		f := settled + ring*inverseRing
 		s := p.scale[i]
 		sample := complex(p.re[i], p.im[i])
 		var turned complex128
@@ -113,18 +118,19 @@ func (m *forward) evaluateRinging(params, residual, jacobian []float64) {
 			state = steady + away*t.end
 			continue
 		}
-		fixed := (1 - source*f) * inverseD // what y0 does to F at a given y
+		fixed := (1 - source*settled) * inverseD // what y0 does to F at a given y, settled and
+		rung := -ring * source * inverseRing * inverseRing
 		for k := range count {
 			away2 := byState[k] - bySteady[k]
-			dy := bySteady[k] + away2*t.mean + away*t.byMean*byLambda[k]
+			df := bySteady[k]*inverseD + (away2*t.mean+away*t.byMean*byLambda[k])*inverseRing
 			byState[k] = bySteady[k] + away2*t.end + away*t.byEnd*byLambda[k]
-			df := dy * inverseD
-			if k >= 3 && k < shuntEnd {
-				if k == 3 {
-					df += fixed * complex(0, p.angular[i])
-				} else {
-					df += fixed
-				}
+			switch {
+			case k == 0:
+				df += rung * complex(0, 2*math.Pi*c0)
+			case k == 3:
+				df += fixed*complex(0, p.angular[i]) + rung*complex(0, 2*math.Pi*fs)
+			case k > 3 && k < shuntEnd:
+				df += fixed + rung
 			}
 			columns[k][2*i], columns[k][2*i+1] = s*real(df), s*imag(df)
 		}

@@ -11,25 +11,39 @@ import (
 	"example.com/admit/service/sweep"
 )
 
+// pole returns the complex frequency at which the unit rings in the network by itself: the zero of R1 + jX + Zp, by Newton's rule.
+func (u truth) pole(n fixture) complex128 {
+	q := complex(u.fs, (u.r1+real(n.c))/(4*math.Pi*u.l1))
+	fs := complex(u.fs, 0)
+	for range 20 {
+		d := 1 + n.c*(complex(u.g0, 0)+complex(0, 2*math.Pi*u.c0)*q)
+		value := complex(u.r1, 0) + complex(0, 2*math.Pi*u.l1)*(q-fs)*(q+fs)/q + n.c/d
+		slope := complex(0, 2*math.Pi*u.l1)*(1+fs*fs/(q*q)) - n.c*n.c*complex(0, 2*math.Pi*u.c0)/(d*d)
+		q -= value / slope
+	}
+	return q
+}
+
 // swept returns the samples of a stepped sweep by the state of the motional arm in the test's own words: at each frequency the current goes from
-// where it was to its steady value along exp(lambda t), and the receiver averages the tail.
+// where it was to its steady value along exp(lambda t), and the receiver averages the tail. What rings, rings at the pole.
 func swept(u truth, n fixture, frequencies []float64, dwell, averaging, leadIn float64) []complex128 {
 	out := make([]complex128, len(frequencies))
+	q := u.pole(n)
+	ringing := 1 + n.c*(complex(u.g0, 0)+complex(0, 2*math.Pi*u.c0)*q)
 	var i1 complex128
 	for i, f := range frequencies {
 		y0 := complex(u.g0, 2*math.Pi*f*u.c0)
 		z := complex(u.r1, 2*math.Pi*u.l1*(f-u.fs)*(f+u.fs)/f)
 		zp := n.c / (1 + n.c*y0)
-		lambda := -(z + zp) / complex(2*u.l1, 0)
+		lambda := complex(0, 2*math.Pi) * (q - complex(f, 0))
 		steady := 1 / (1 + n.c*y0) / (z + zp)
 		if i == 0 {
 			i1 = steady * (1 - cmplx.Exp(lambda*complex(leadIn, 0)))
 		}
 		from, to := cmplx.Exp(lambda*complex(dwell-averaging, 0)), cmplx.Exp(lambda*complex(dwell, 0))
 		mean := (to - from) / (lambda * complex(averaging, 0))
-		current := steady + (i1-steady)*mean
+		total := (y0+steady)/(1+n.c*y0) + (i1-steady)*mean/ringing // port current over source voltage
 		i1 = steady + (i1-steady)*to
-		total := (y0 + current) / (1 + n.c*y0) // port current over source voltage
 		out[i] = n.a + (n.b-n.a*n.c)*total
 	}
 	return out
@@ -42,7 +56,7 @@ func TestSweptAgainstIntegration(t *testing.T) {
 	tau := 1 / (math.Pi * bw)
 	frequencies := grid(u.fs, 2*bw, 9)
 	dwell := 0.3 * tau
-	// Runge-Kutta of the fourth order on di/dt = lambda i + 1/(2 L D), sample averaged by the trapezium rule.
+	// Runge-Kutta of the fourth order on di/dt = lambda (i - steady), sample averaged by the trapezium rule.
 	const steps = 4000
 	h := dwell / steps
 	const leadSteps = 6667 // about half a time constant
@@ -51,9 +65,9 @@ func TestSweptAgainstIntegration(t *testing.T) {
 	for k, f := range frequencies {
 		y0 := complex(0, 2*math.Pi*f*u.c0)
 		d := 1 + n.c*y0
-		lambda := -(complex(u.r1, 2*math.Pi*u.l1*(f-u.fs)*(f+u.fs)/f) + n.c/d) / complex(2*u.l1, 0)
-		drive := 1 / (complex(2*u.l1, 0) * d)
-		rate := func(i complex128) complex128 { return lambda*i + drive }
+		lambda := complex(0, 2*math.Pi) * (u.pole(n) - complex(f, 0))
+		steady := 1 / (d * (complex(u.r1, 2*math.Pi*u.l1*(f-u.fs)*(f+u.fs)/f) + n.c/d))
+		rate := func(i complex128) complex128 { return lambda * (i - steady) }
 		step := func() {
 			a := rate(i1)
 			b := rate(i1 + a*complex(h/2, 0))
