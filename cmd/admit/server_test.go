@@ -418,3 +418,27 @@ func publishedUnits(t *testing.T) []publishedUnit {
 	}
 	return out
 }
+
+// TestPublish: files become known, are known already the second time, and a bad one is refused with its faults.
+func TestPublish(t *testing.T) {
+	p := start(t, filepath.Join(t.TempDir(), "store"))
+	b := newBench(t, 2, 3)
+	dir := writeUnit(t, b.measure(simulated.Insert{Unit: b.station.Kind.Nominal()}), firstID)
+	for _, want := range []string{": published", ": known already"} {
+		for _, c := range [][2]string{{"part-type", "part-type.yaml"}, {"calibration", "calibration.yaml"}} {
+			if code, out := p.do("publish", c[0], filepath.Join(dir, c[1])); code != 0 || !strings.Contains(out, want) {
+				t.Errorf("publish %s: exit %d, %s", c[0], code, out)
+			}
+		}
+	}
+	broken := filepath.Join(dir, "broken.yaml")
+	if err := os.WriteFile(broken, []byte("part_type: X\nversion: 0\nweather: fine\n"), 0o600); err != nil {
+		t.Fatal(err)
+	}
+	if code, out := p.do("publish", "part-type", broken); code != exitBad || !strings.Contains(out, "weather") || !strings.Contains(out, "version") {
+		t.Errorf("a broken limits file: exit %d, %s", code, out)
+	}
+	if code, out := p.do("publish", "calibration", filepath.Join(dir, "nothing.yaml")); code != exitBad {
+		t.Errorf("no such file: exit %d, %s", code, out)
+	}
+}
