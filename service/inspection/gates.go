@@ -6,6 +6,7 @@ import (
 	"time"
 
 	"example.com/admit/service/network"
+	"example.com/admit/service/parttype"
 	"example.com/admit/service/sweep"
 	"example.com/admit/service/verdict"
 )
@@ -30,8 +31,8 @@ func (j *Judge) open(c *Case) (*gate, error) {
 	if b.ReferenceLock != nil && !*b.ReferenceLock {
 		g.add(verdict.ReferenceUnlocked, "The station's source was not locked to its reference clock.")
 	}
-	if t, p := b.Temperature, c.PartType.Temperature; t != nil && p != nil && !within(t.Celsius, p.AllowedC.Min, p.AllowedC.Max) {
-		g.add(verdict.TemperatureOutOfRange, "The unit was at %.1f °C; the part type allows %s.", t.Celsius, rangeText(p.AllowedC.Min, p.AllowedC.Max, "°C"))
+	if t, p := b.Temperature, c.PartType.Temperature; t != nil && p != nil && !held(t, p.AllowedC) {
+		g.add(verdict.TemperatureOutOfRange, "The unit was at %.1f ± %.1f °C (k = 2); the part type allows %s.", t.Celsius, 2*t.StandardUncertainty, rangeText(p.AllowedC.Min, p.AllowedC.Max, "°C"))
 	}
 	cal := c.Calibration
 	if cal == nil {
@@ -115,6 +116,15 @@ func suspends(c verdict.Cause) (frequencies, others bool) {
 		return false, true // a resistance in series moves no frequency
 	}
 	return true, true
+}
+
+// held reports whether a temperature lies in its range, and is known well enough to say so: its expanded uncertainty (k = 2) at most half of the
+// range, where there is one on both sides.
+func held(t *Temperature, allowed parttype.Bounds) bool {
+	if allowed.Min != nil && allowed.Max != nil && 2*t.StandardUncertainty > (*allowed.Max-*allowed.Min)/2 {
+		return false
+	}
+	return within(t.Celsius, allowed.Min, allowed.Max)
 }
 
 func within(v float64, low, high *float64) bool {

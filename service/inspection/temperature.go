@@ -44,7 +44,11 @@ func (w *workup) describeReferral() {
 			w.p.Temperature.ReferenceC, verdict.Format(shift, verdict.UnitPPM), w.c.Begin.Temperature.Celsius)
 		return
 	}
-	if w.p.Temperature != nil && w.p.Temperature.Curve != [3]float64{} {
-		w.remark("The temperature of the unit is not known: frequencies are not referred to %g °C.", w.p.Temperature.ReferenceC)
+	switch p := w.p.Temperature; {
+	case p == nil || w.c.Begin.Temperature != nil:
+	case p.Curve != [3]float64{}:
+		w.remark("The temperature of the unit is not known: frequencies are not referred to %g °C.", p.ReferenceC)
+	case p.AllowedC.Min != nil || p.AllowedC.Max != nil:
+		w.remark("The temperature of the unit is not known; the part type allows %s.", rangeText(p.AllowedC.Min, p.AllowedC.Max, "°C"))
 	}
 }
