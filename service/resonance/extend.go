@@ -1,6 +1,10 @@
 package resonance
 
-import "math"
+import (
+	"math"
+
+	"example.com/admit/service/uncertainty"
+)
 
 // A shunt conductance, a free phase of all samples and a factor on the timing are parameters only where the sweep itself asks for them. The rule, for each:
 //
@@ -8,7 +12,7 @@ import "math"
 //     window of a reflection a turn of the reference plane looks exactly like another C0, R1 and L1, and no significance can make up
 //     for that: the smallest error of the model would be blown up by the inverse of that part;
 //  2. it is significant: the likelihood gains more than leastGain (five standard deviations), so that in a million sweeps without
-//     it none loses precision to it;
+//     it none loses precision to it; with few points left over the noise itself is uncertain, and Student's distribution asks for more;
 //  3. it explains: of what is systematic in the residual it takes away at least a third, and where noise hides that from point to point nothing
 //     is left that hangs together over a loaded width. A neighbouring mode is not mopped up by a phase.
 //
@@ -16,6 +20,7 @@ import "math"
 const (
 	leastPart      = 0.03
 	leastGain      = 25.0
+	mostChance     = 6e-7 // two-sided, of five standard deviations
 	leastExplained = 1.0 / 3
 )
 
@@ -24,6 +29,7 @@ type extra struct {
 	value, deviation float64 // where it would go, and its standard deviation at the present noise
 	part             float64 // length of its derivative that the other parameters cannot imitate, over the whole length
 	gain             float64 // of twice the log-likelihood
+	freedom          float64 // degrees of freedom of the deviation
 	explained        float64 // sum of squares that it would take away
 }
 
@@ -65,7 +71,7 @@ func (f *Fitter) extend(est *Estimate) {
 		}
 		best := -1
 		for i, e := range extras {
-			if e.part > leastPart && e.gain > leastGain && (best < 0 || e.gain > extras[best].gain) {
+			if e.part > leastPart && e.gain > leastGain && e.chance() < mostChance && (best < 0 || e.gain > extras[best].gain) {
 				best = i
 			}
 		}
@@ -153,6 +159,14 @@ func (f *Fitter) beside(column, residual []float64) (e extra) {
 	remaining := math.Max(sum-e.explained, 1e-12*sum)
 	freedom := math.Max(float64(2*f.seen.points-n-1), 1)
 	e.value, e.deviation = -product/left, math.Sqrt(remaining/freedom/left)
-	e.part, e.gain = math.Sqrt(left/whole), f.seen.gain(sum, remaining)
+	e.part, e.gain, e.freedom = math.Sqrt(left/whole), f.seen.gain(sum, remaining), freedom
 	return e
+}
+
+// chance returns the probability that noise alone would move the parameter as far.
+func (e *extra) chance() float64 {
+	if !(e.deviation > 0) {
+		return 1
+	}
+	return 2 * uncertainty.StudentTail(math.Abs(e.value)/e.deviation, e.freedom)
 }

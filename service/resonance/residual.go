@@ -164,8 +164,9 @@ func (r *residuals) blocks(pairs []float64, length int) float64 {
 	return ratio
 }
 
-// scatter is the lag-1 correlation that white noise stays below: four of its standard deviations, 1/sqrt(2 n) for n complex points.
-func (r *residuals) scatter() float64 { return 4 / math.Sqrt(float64(r.parts*max(r.points, 1))) }
+// scatter is the lag-1 correlation that white noise stays below: five of its standard deviations, 1/sqrt(2 n) for n complex points; four are met
+// once in thirty thousand sweeps.
+func (r *residuals) scatter() float64 { return 5 / math.Sqrt(float64(r.parts*max(r.points, 1))) }
 
 // noise returns the root mean square as that of a complex sample, of which a magnitude shows one part.
 func (r *residuals) noise() float64 { return r.rms * math.Sqrt(2/float64(r.parts)) }
