@@ -44,6 +44,10 @@ var rules = []rule{
 	{[]string{"service/web", "service/metrics", "service/floor"}, []string{module + "/service/rpc"}, "one edge does not know another; what they share is the domain's"},
 	{[]string{"service/..."}, []string{module + "/fixtures/...", module + "/storage/...", module + "/cmd/..."}, "service declares ports; fixtures and storage are handed in by cmd"},
 	{[]string{"fixtures/simulated"}, []string{module + "/service/resonance", module + "/service/survey"}, "a program must not check itself"},
+	{[]string{"cmd/prove/bound"}, []string{
+		module + "/service/sweep", module + "/service/network", module + "/service/leastsquares", module + "/service/uncertainty", module + "/service/resonance",
+		module + "/service/survey", module + "/fixtures/...",
+	}, "the bound shares nothing with the fit that is held against it"},
 	{[]string{"storage/volume/...", "storage/catalogue"}, []string{module + "/service/...", module + "/api/..."}, "a volume keeps opaque records"},
 	{[]string{"storage/..."}, []string{module + "/fixtures/...", module + "/service/rpc", module + "/service/web"}, "the store serves nobody by itself"},
 }
