@@ -102,7 +102,7 @@ func (w *workup) mainReading(limit parttype.Limit) verdict.Reading {
 	} else if r.Note = note; len(r.SuspendedBy) == 0 {
 		// A unit that has no such quantity at all: not a part out of limit, a limit that does not fit the unit.
 		r.SuspendedBy = []verdict.Cause{verdict.ModelMisfit}
-		w.ev.Causes = append(w.ev.Causes, verdict.NewCause(verdict.ModelMisfit, fmt.Sprintf("%s cannot be told: %s.", verdict.Label(limit.Quantity, verdict.Nowhere), r.Note)))
+		w.cause(verdict.NewCause(verdict.ModelMisfit, fmt.Sprintf("%s cannot be told: %s.", verdict.Label(limit.Quantity, verdict.Nowhere), r.Note)))
 	}
 	return r
 }
